@@ -1,0 +1,1 @@
+"""Figures, tables, the report and the command: they show and compute nothing new."""

@@ -1,0 +1,1 @@
+"""Time series, files, decisions and artifacts of one study."""

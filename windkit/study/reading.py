@@ -1,0 +1,303 @@
+"""From a station's files to columns in the library's units on starts of intervals in UTC.
+
+Here a station's declared files are read, each column is converted once, and every row is kept
+or listed as set aside. Text files are opened in `text_files`, the clock is in `stamps`. Nothing
+is judged or masked: that is for the checks and the ledger.
+"""
+
+from __future__ import annotations
+
+import hashlib
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+import pyarrow as pa
+import pyarrow.parquet as pq
+from numpy.typing import NDArray
+
+from windkit.kernels.units import to_si
+from windkit.study.errors import StudyError
+from windkit.study.paths import file_in_study
+from windkit.study.stamps import interval_of, on_the_clock, read_stamps, to_starts
+from windkit.study.stations import ChannelSettings, SensorPeriod, StationSettings
+from windkit.study.text_files import RawTable, listed, missing_column, read_text
+
+__all__ = ["Reading", "read_station"]
+
+#: Recorded bearings outside this range are no bearings; they are left for the range check to
+#: list instead of being wrapped into a plausible one [deg].
+_BEARINGS = (-180.0, 360.0)
+
+
+@dataclass(frozen=True)
+class Reading:
+    """A station's record as read: converted, not judged.
+
+    Attributes
+    ----------
+    settings : StationSettings
+        What the study says about the station.
+    frame : DataFrame
+        Channels as float64 in the library's units, on a UTC index ``time`` of interval starts;
+        only intervals that stand in the files.
+    rows_read, rows_kept : int
+        Rows of the files, and rows of `frame`; the difference is `set_aside`.
+    set_aside : DataFrame
+        Rows left out: ``file``, ``line``, ``stamp`` (as written), ``reason``.
+    sha256 : dict of str to str
+        Hash of each file as sent, by its path in the settings.
+    expected_count : int
+        Intervals from the first to the last, whether or not they stand in the files.
+    notes : tuple of str
+        What a reader should know about the files and changes no value.
+    """
+
+    settings: StationSettings
+    frame: pd.DataFrame
+    rows_read: int
+    rows_kept: int
+    set_aside: pd.DataFrame
+    sha256: dict[str, str]
+    expected_count: int
+    notes: tuple[str, ...] = ()
+
+    @property
+    def interval(self) -> pd.Timedelta:
+        """Length of the averaging interval."""
+        return interval_of(self.settings)
+
+
+def read_station(settings: StationSettings, folder: Path) -> Reading:
+    """Read a station's files, convert them once and account for every row.
+
+    Parameters
+    ----------
+    settings : StationSettings
+        The station as the study declares it.
+    folder : Path
+        The study folder; the files lie inside it.
+
+    Returns
+    -------
+    Reading
+        The record, with ``rows_read == rows_kept + len(set_aside)``.
+
+    Raises
+    ------
+    StudyError
+        If a file, a column, a value or a stamp does not fit what is declared.
+    """
+    paths = {written: file_in_study(folder, written, key="files") for written in settings.files}
+    with ThreadPoolExecutor(max_workers=1) as beside:
+        hashes = {written: beside.submit(_sha256, path) for written, path in paths.items()}
+        tables = [_read_table(path, written, settings) for written, path in paths.items()]
+        stamps = [read_stamps(table, settings) for table in tables]
+        sha256 = {written: task.result() for written, task in hashes.items()}
+    local = np.concatenate(stamps)
+    starts = np.cumsum([0, *(len(each) for each in stamps)])
+
+    def table_of(row: int) -> tuple[RawTable, int]:
+        at = int(np.searchsorted(starts, row, side="right")) - 1
+        return tables[at], row - int(starts[at])
+
+    def place(row: int) -> str:
+        table, at = table_of(row)
+        return f"{table.file} {table.unit_of_rows} {table.line_numbers()[at]}"
+
+    kept, aside = on_the_clock(local, settings, place)
+    in_order = len(kept) == len(local) and bool(np.all(np.diff(kept) == 1))
+    frame = pd.DataFrame(
+        {
+            channel.name: _converted(
+                _joined(tables, channel.column, None if in_order else kept),
+                local[kept],
+                channel,
+                settings,
+            )
+            for channel in settings.channels
+        },
+        index=to_starts(local[kept], settings),
+        copy=False,
+    )
+    _refuse_empty_channels(frame, settings)
+    listing = [(table.file, line, "", reason) for table in tables for line, reason in table.broken]
+    for row, reason in aside:
+        table, at = table_of(row)
+        line = int(table.line_numbers()[at])
+        listing.append((table.file, line, str(table.stamps[at]), reason))
+    set_aside = pd.DataFrame(listing, columns=["file", "line", "stamp", "reason"])
+    return Reading(
+        settings=settings,
+        frame=frame,
+        rows_read=len(local) + sum(len(table.broken) for table in tables),
+        rows_kept=len(frame),
+        set_aside=set_aside,
+        sha256=sha256,
+        expected_count=int((frame.index[-1] - frame.index[0]) / interval_of(settings)) + 1,
+        notes=tuple(note for table in tables for note in table.notes),
+    )
+
+
+def _sha256(path: Path) -> str:
+    with path.open("rb") as stream:
+        return hashlib.file_digest(stream, "sha256").hexdigest()
+
+
+def _read_table(path: Path, written: str, settings: StationSettings) -> RawTable:
+    if path.stat().st_size == 0:
+        raise StudyError.of(
+            file=written,
+            met="the file is empty",
+            rule="a file has a header line and rows",
+            remedy="ask for the file again, or take it out of files",
+        )
+    if path.suffix.lower() in {".parquet", ".pq"}:
+        return _read_parquet(path, written, settings)
+    return read_text(path, written, settings)
+
+
+def _read_parquet(path: Path, written: str, settings: StationSettings) -> RawTable:
+    wanted = [settings.time_column, *(channel.column for channel in settings.channels)]
+    try:
+        names = pq.read_schema(path).names
+        for name in wanted:
+            if name not in names:
+                raise missing_column(written, name, names, None)
+        table = pq.read_table(path, columns=wanted)
+    except (pa.ArrowException, OSError) as error:
+        raise StudyError.of(
+            file=written,
+            met=f"the file cannot be read as Parquet ({str(error).splitlines()[0]})",
+            rule="a file is what its ending says",
+            remedy="ask for the file again, or correct its ending",
+        ) from error
+    stamps = table[settings.time_column].combine_chunks()
+    if not (pa.types.is_timestamp(stamps.type) or pa.types.is_string(stamps.type)):
+        if not pa.types.is_large_string(stamps.type):
+            raise StudyError.of(
+                file=written,
+                met=f"the column '{settings.time_column}' has the type {stamps.type}",
+                rule="stamps are timestamps or texts",
+                remedy="store the file again with a timestamp column",
+            )
+        stamps = stamps.cast(pa.string())
+    columns = {}
+    for name in wanted[1:]:
+        kind = table[name].type
+        if not (pa.types.is_integer(kind) or pa.types.is_floating(kind) or pa.types.is_null(kind)):
+            raise StudyError.of(
+                file=written,
+                met=f"the column '{name}' has the type {kind}",
+                rule="declared columns hold numbers",
+                remedy="store the file again with that column as numbers",
+            )
+        values = np.array(table[name].cast(pa.float64()).to_numpy(), dtype=np.float64)
+        for text in settings.missing:
+            try:
+                values[values == float(text.replace(settings.decimal, "."))] = np.nan
+            except ValueError:
+                continue
+        infinite = np.flatnonzero(np.isinf(values))
+        if len(infinite):
+            raise StudyError.of(
+                file=written,
+                met=f"'{name}' is infinite in {len(infinite)} rows, first in row {infinite[0] + 1}",
+                rule="values are finite numbers or missing",
+                remedy="ask for the file again",
+            )
+        columns[name] = values
+    rows = np.arange(1, len(table) + 1, dtype=np.int64)
+    return RawTable(written, stamps, columns, lambda: rows, unit_of_rows="row")
+
+
+def _joined(
+    tables: list[RawTable], column: str, kept: NDArray[np.intp] | None
+) -> NDArray[np.float64]:
+    parts = [table.columns[column] for table in tables]
+    values = parts[0] if len(parts) == 1 else np.concatenate(parts)
+    return values if kept is None else values[kept]
+
+
+def _converted(
+    recorded: NDArray[np.float64],
+    local: NDArray[np.datetime64],
+    channel: ChannelSettings,
+    settings: StationSettings,
+) -> NDArray[np.float64]:
+    """Values in the library's unit: calibration first, in the column's unit, then the unit."""
+    values = _recalibrated(recorded, local, channel, settings)
+    if channel.statistic == "sd":
+        zero, one = to_si([0.0, 1.0], channel.unit, channel.quantity)
+        return values * (one - zero)  # a spread has no offset
+    values = to_si(values, channel.unit, channel.quantity)
+    if not channel.is_direction:
+        return values
+    with np.errstate(invalid="ignore"):
+        bearing = (values >= _BEARINGS[0]) & (values <= _BEARINGS[1])
+    declination = settings.declination_deg or 0.0
+    wrapped = (values + declination) % 360.0
+    wrapped[wrapped >= 360.0] = 0.0  # -1e-15 % 360 rounds to 360
+    return np.where(bearing, wrapped, values)
+
+
+def _recalibrated(
+    recorded: NDArray[np.float64],
+    local: NDArray[np.datetime64],
+    channel: ChannelSettings,
+    settings: StationSettings,
+) -> NDArray[np.float64]:
+    if not channel.sensors:
+        return _with_certificate(recorded, channel, channel.statistic == "sd")
+    begins = [np.datetime64(sensor.date_from, "us") for sensor in channel.sensors]
+    if begins[0] > local[0]:
+        raise StudyError.of(
+            key=f"channels '{channel.name}' sensors",
+            met=f"{settings.name}: the first sensor hangs from {begins[0]}, the record begins "
+            f"at {local[0]}",
+            rule="a sensor is named for every row",
+            remedy="add the sensor that hung before, or correct date_from (on the file's clock)",
+        )
+    edges = [*np.searchsorted(local, np.asarray(begins)), len(local)]
+    edges[0] = 0
+    parts = [
+        _with_certificate(recorded[start:stop], sensor, channel.statistic == "sd")
+        for sensor, start, stop in zip(channel.sensors, edges, edges[1:], strict=False)
+    ]
+    return np.concatenate(parts)
+
+
+def _with_certificate(
+    recorded: NDArray[np.float64], calibration: ChannelSettings | SensorPeriod, is_spread: bool
+) -> NDArray[np.float64]:
+    """Undo what the logger applied and apply the certificate, if both are given."""
+    if (
+        calibration.applied_slope is None
+        or calibration.applied_offset is None
+        or calibration.certificate_slope is None
+        or calibration.certificate_offset is None
+    ):
+        return recorded
+    if is_spread:
+        return recorded / calibration.applied_slope * calibration.certificate_slope
+    raw = (recorded - calibration.applied_offset) / calibration.applied_slope
+    return raw * calibration.certificate_slope + calibration.certificate_offset
+
+
+def _refuse_empty_channels(frame: pd.DataFrame, settings: StationSettings) -> None:
+    empty = [
+        channel.name
+        for channel in settings.channels
+        if np.isnan(frame[channel.name].iat[0]) and frame[channel.name].isna().all()
+    ]
+    if empty:
+        columns = [f"'{settings.channel(name).column}' ({name})" for name in empty]
+        raise StudyError.of(
+            file=", ".join(settings.files),
+            met=f"there is not one value in {listed(columns)}",
+            rule="a declared channel has values",
+            remedy="take it out of channels; check missing and the sensor's wiring if it should "
+            "have some",
+        )

@@ -28,10 +28,10 @@ from windkit.kernels.weibull import (
 
 # WEI-5: hours at each whole speed 0 to 25 m/s, after the example on average power in Masters
 # 2004, Renewable and Efficient Electric Power Systems, ch. 6 (hours from memory, sum 8757).
-HOURS = np.array(
-    "24 276 527 729 869 941 946 896 805 690 565 444 335 243 170 114 74 46 28 16 9 5 3 1 1 0".split(),
-    dtype=float,
+HOURS_TEXT = (
+    "24 276 527 729 869 941 946 896 805 690 565 444 335 243 170 114 74 46 28 16 9 5 3 1 1 0"
 )
+HOURS = np.array(HOURS_TEXT.split(), dtype=float)
 SPEEDS = np.arange(26.0)
 
 

@@ -1,0 +1,193 @@
+"""Figures: what they draw is what they were given, with units, in the same bytes each time."""
+
+from __future__ import annotations
+
+import matplotlib as mpl
+
+mpl.use("Agg")
+
+import matplotlib.pyplot as plt
+import numpy as np
+import pandas as pd
+import pytest
+
+from windkit.faces import figures, look
+
+
+@pytest.fixture(autouse=True)
+def _close_all():
+    yield
+    plt.close("all")
+
+
+YEARS = np.arange(2004, 2024)
+HOURS = pd.DataFrame({"a": np.linspace(6, 7, 24)}, index=range(24))
+MONTHS = pd.DataFrame({"a": np.linspace(6, 7, 12)}, index=range(1, 13))
+METHODS = pd.DataFrame(
+    {"method": ["x", "y"], "mean": [7, 7.1], "low": [6.8, 7], "high": [7.2, 7.2]}
+)
+RECOVERY = pd.DataFrame(
+    {"a": [0.9999, np.nan], "b": [1.0, 0.0]}, index=pd.period_range("2022-11", periods=2, freq="M")
+)
+
+FIT = {"f": ([0, 9], [0, 9])}
+
+DRAWINGS = {
+    "power_curve": lambda ax: figures.power_curve(
+        [3, 12, 25], [50, 3000, 3000], [90, 5e3, 5e4], ax=ax
+    ),
+    "speed_distribution": lambda ax: figures.speed_distribution(
+        [0, 0.5, 1.5], [0.1, 0.9], 1, 2, ax=ax
+    ),
+    "coverage": lambda ax: figures.coverage(RECOVERY, ax=ax),
+    "profile": lambda ax: figures.profile([40, 80], [6.4, 7.2], 0.17, 100, ax=ax),
+    "turbulence_by_speed": lambda ax: figures.turbulence_by_speed(
+        [4, 5], [0.1, 0.1], [0.2, 0.2], ax=ax
+    ),
+    "pair_ratio_by_direction": lambda ax: figures.pair_ratio_by_direction(
+        [0, 90, 180, 270], [1, 0.9, 1, 1.1], boom_bearings={"a": 315}, ax=ax
+    ),
+    "scatter_fit": lambda ax: figures.scatter_fit([4, 5, np.nan], [4, 5, 6], FIT, ax=ax),
+    "yearly_means": lambda ax: figures.yearly_means(
+        YEARS, np.full(20, 7.0), campaign_years=(2022, 2023), long_term_mean=7.0, ax=ax
+    ),
+    "method_comparison": lambda ax: figures.method_comparison(METHODS, chosen="y", ax=ax),
+    "loss_staircase": lambda ax: figures.loss_staircase(["Gross", "Wake"], [50, 45], ax=ax),
+    "uncertainty_bars": lambda ax: figures.uncertainty_bars(
+        ["a", "b"], [0.02, 0.06], ["static", "yearly"], total={"all": 0.063}, ax=ax
+    ),
+    "exceedance_curves": lambda ax: figures.exceedance_curves(45000, {1: 0.09, 10: 0.07}, ax=ax),
+    "tornado": lambda ax: figures.tornado(["a", "b"], [40, 44], [50, 46], 45, ax=ax),
+}
+
+
+@pytest.mark.parametrize("name", DRAWINGS)
+def test_draws_on_the_given_axes_and_returns_them(name):
+    ax = plt.subplots()[1]
+    assert DRAWINGS[name](ax) is ax
+    assert ax.get_title(loc="left") or ax.get_title()
+    assert ax.get_xlabel() or name == "method_comparison"
+
+
+@pytest.mark.parametrize("name", DRAWINGS)
+def test_same_input_same_bytes(name, tmp_path):
+    once, twice = (
+        figures.save_png(DRAWINGS[name](None), tmp_path / f"{i}.png").read_bytes() for i in range(2)
+    )
+    assert once == twice
+    assert len(once) < 150_000
+
+
+def test_the_session_keeps_its_own_settings():
+    before = mpl.rcParams["font.size"]
+    mpl.rcParams["font.size"] = 13.0
+    DRAWINGS["power_curve"](None)
+    assert mpl.rcParams["font.size"] == 13.0
+    mpl.rcParams["font.size"] = before
+
+
+def test_every_axis_with_a_dimension_names_its_unit():
+    for name in set(DRAWINGS) - {"coverage", "method_comparison", "yearly_means"}:
+        ax = DRAWINGS[name](None)
+        labels = f"{ax.get_xlabel()} {ax.get_ylabel()}"
+        shares = "uncertainty" in labels.lower()
+        assert "[" in labels or shares, f"{name}: {labels!r}"
+
+
+def test_power_curve_shows_the_curve_as_given():
+    lines = DRAWINGS["power_curve"](None).get_lines()
+    assert lines[-1].get_xydata().tolist() == [[3, 50], [12, 3000], [25, 3000]]
+
+
+def test_distribution_is_drawn_per_metre_a_second():
+    # 0.1 of the time in half a metre a second is 0.2 of it per m/s.
+    heights = [bar.get_height() for bar in DRAWINGS["speed_distribution"](None).patches]
+    assert heights == pytest.approx([0.2, 0.9])
+
+
+def test_almost_all_is_not_all_in_the_coverage():
+    texts = [text.get_text() for text in DRAWINGS["coverage"](None).texts]
+    assert texts == ["99", "–", "100", "0"]
+
+
+def test_rose_counts_what_has_a_direction_and_prints_the_total():
+    speed = np.array([5.0, 5.0, 5.0, 5.0, 0.1, np.nan, 6.0])
+    direction = np.array([0.0, 360.0, 725.0, -90.0, 10.0, 50.0, np.nan])
+    ax = figures.wind_rose(
+        speed, direction, sector_count=4, calm_share=1 / 6, undirected_share=1 / 6
+    )
+    # Sectors from north by east: 0, 360 and 725 degrees are north, -90 is west.
+    assert ax._info["table"].sum(axis=0).tolist() == [3, 0, 0, 1]
+    said = " ".join(text.get_text() for text in ax.texts)
+    assert "6 records" in said
+    assert "calm 16.7 %" in said
+    assert "no direction 16.7 %" in said
+
+
+def test_rose_rings_are_shares_of_the_whole():
+    speed = np.full(100, 5.0)
+    ax = figures.wind_rose(speed, np.full(100, 90.0), count=200)
+    rings = dict(
+        zip(ax.get_yticks(), (text.get_text() for text in ax.get_yticklabels()), strict=True)
+    )
+    # 80 of 200 records are 40 % of the whole, whatever has no direction.
+    assert rings[80.0] == "40 %"
+
+
+def test_rose_takes_the_place_of_plain_axes():
+    whole, pair = plt.subplots(1, 2)
+    ax = figures.wind_rose([5.0, 6.0], [10.0, 20.0], ax=pair[0])
+    assert ax.name == "windrose"
+    assert len(whole.axes) == 2
+    assert figures.wind_rose([5.0], [10.0], ax=ax) is ax
+
+
+def test_rose_without_a_direction_is_refused():
+    with pytest.raises(ValueError, match=r"no record has both a direction and a speed above 0\.5"):
+        figures.wind_rose([5.0, 0.1], [np.nan, 10.0])
+    with pytest.raises(ValueError, match="2 speeds and 1 directions"):
+        figures.wind_rose([5.0, 6.0], [10.0])
+
+
+def test_exceedance_marks_stand_on_the_printed_levels():
+    # id UNC-2: the normal quantile of 90 % is 1.28155.
+    marks = DRAWINGS["exceedance_curves"](None).get_lines()
+    p90 = [
+        x for line in marks for x, y in line.get_xydata() if y == 0.9 and len(line.get_xdata()) == 5
+    ]
+    assert p90 == pytest.approx(
+        [45000 * (1 - 1.28155 * 0.09), 45000 * (1 - 1.28155 * 0.07)], rel=1e-6
+    )
+
+
+def test_staircase_ends_in_net_and_never_climbs():
+    ax = DRAWINGS["loss_staircase"](None)
+    assert [text.get_text() for text in ax.get_yticklabels()] == ["Gross", "Wake", "Net"]
+    assert sorted(bar.get_width() for bar in ax.patches) == [5, 45, 50]
+    with pytest.raises(ValueError, match="must fall from gross to net"):
+        figures.loss_staircase(["Gross", "Wake"], [45, 50])
+    with pytest.raises(ValueError, match="2 values needs as many labels, not 1"):
+        figures.loss_staircase(["Gross"], [50, 45])
+
+
+def test_an_unknown_kind_of_uncertainty_is_refused():
+    with pytest.raises(ValueError, match=r"'static' or 'yearly', not \['monthly'\]"):
+        figures.uncertainty_bars(["a"], [0.1], ["monthly"])
+
+
+def test_tornado_puts_the_widest_on_top():
+    ax = figures.tornado(["narrow", "wide"], [44, 40], [46, 50], 45)
+    assert [text.get_text() for text in ax.get_yticklabels()] == ["wide", "narrow"]
+    assert ax.yaxis_inverted()
+
+
+def test_hours_and_months_stand_side_by_side():
+    day, year = figures.diurnal_and_monthly(HOURS, MONTHS, hours_in="local time, UTC+1")
+    assert day.get_xlabel() == "Hour, local time, UTC+1"
+    assert year.get_lines()[0].get_ydata().tolist() == MONTHS["a"].tolist()
+
+
+def test_house_settings_can_be_taken_for_a_session():
+    with mpl.rc_context():
+        figures.use()
+        assert mpl.rcParams["figure.dpi"] == look.DPI

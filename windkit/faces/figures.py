@@ -1,0 +1,47 @@
+"""All figures under one name, in the order a study meets them.
+
+They are drawn in `figures_measured`, `figures_rose`, `figures_long_term` and `figures_energy`
+beside this module, with the look of `windkit.faces.look`. Every function takes plain arrays or
+frames and ``ax=None``, draws and returns the axes.
+"""
+
+from __future__ import annotations
+
+from windkit.faces.figures_energy import (
+    exceedance_curves,
+    loss_staircase,
+    power_curve,
+    tornado,
+    uncertainty_bars,
+)
+from windkit.faces.figures_long_term import method_comparison, scatter_fit, yearly_means
+from windkit.faces.figures_measured import (
+    coverage,
+    diurnal_and_monthly,
+    pair_ratio_by_direction,
+    profile,
+    speed_distribution,
+    turbulence_by_speed,
+)
+from windkit.faces.figures_rose import wind_rose
+from windkit.faces.look import save_png, use
+
+__all__ = [
+    "coverage",
+    "diurnal_and_monthly",
+    "exceedance_curves",
+    "loss_staircase",
+    "method_comparison",
+    "pair_ratio_by_direction",
+    "power_curve",
+    "profile",
+    "save_png",
+    "scatter_fit",
+    "speed_distribution",
+    "tornado",
+    "turbulence_by_speed",
+    "uncertainty_bars",
+    "use",
+    "wind_rose",
+    "yearly_means",
+]

@@ -290,7 +290,7 @@ def _refuse_empty_channels(frame: pd.DataFrame, settings: StationSettings) -> No
     empty = [
         channel.name
         for channel in settings.channels
-        if np.isnan(frame[channel.name].iat[0]) and frame[channel.name].isna().all()
+        if np.isnan(frame[channel.name].iloc[0]) and frame[channel.name].isna().all()
     ]
     if empty:
         columns = [f"'{settings.channel(name).column}' ({name})" for name in empty]

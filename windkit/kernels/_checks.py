@@ -9,7 +9,10 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-__all__ = ["floats", "refuse", "refuse_negative", "refuse_not_positive"]
+__all__ = ["floats", "kelvin", "refuse", "refuse_negative", "refuse_not_positive"]
+
+#: Colder than any air ever measured near the ground (184 K): below it a unit is wrong [K].
+_LOWEST_PLAUSIBLE_TEMPERATURE = 173.15
 
 
 def floats(values: ArrayLike) -> NDArray[np.float64]:
@@ -53,4 +56,16 @@ def refuse_not_positive(
     """Values as floats; ValueError if any is zero or below."""
     array = floats(values)
     refuse(array <= 0.0, array, f"{name} must be positive [{unit}]", remedy)
+    return array
+
+
+def kelvin(name: str, temperature: ArrayLike) -> NDArray[np.float64]:
+    """Temperatures as floats [K]; ValueError if any looks like degrees Celsius."""
+    array = floats(temperature)
+    refuse(
+        array < _LOWEST_PLAUSIBLE_TEMPERATURE,
+        array,
+        f"{name} must be in kelvin, at least {_LOWEST_PLAUSIBLE_TEMPERATURE:g}",
+        "add 273.15 if it is in degrees Celsius",
+    )
     return array

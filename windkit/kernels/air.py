@@ -9,7 +9,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from windkit.kernels._checks import floats, refuse, refuse_not_positive
+from windkit.kernels._checks import floats, kelvin, refuse, refuse_not_positive
 from windkit.kernels.constants import (
     GAS_CONSTANT_DRY_AIR,
     GAS_CONSTANT_WATER_VAPOUR,
@@ -48,8 +48,6 @@ _VAPOUR_PRESSURE_AT_ZERO, _VAPOUR_PRESSURE_GROWTH = 0.000_020_5, 0.063_184_6
 #: Magnus formula over water, [1] and [degC]: WMO-No. 8, annex 4.B.
 _MAGNUS_FACTOR, _MAGNUS_TEMPERATURE = 17.62, 243.12
 
-#: Colder than any air ever measured near the ground (184 K): below it a unit is wrong [K].
-_LOWEST_PLAUSIBLE_TEMPERATURE = 173.15
 #: Pressure at about 11 800 m: below it a unit is wrong [Pa].
 _LOWEST_PLAUSIBLE_PRESSURE = 20_000.0
 #: A humidity sensor in cloud may read a little above one; percent reads far above.
@@ -127,7 +125,7 @@ def temperature_at_height(
     ----------
     .. [1] ISO 2533:1975, Standard Atmosphere: the lapse rate.
     """
-    return _checked_temperature(temperature) - lapse_rate * floats(height_difference)
+    return kelvin("temperature", temperature) - lapse_rate * floats(height_difference)
 
 
 def pressure_at_height(
@@ -162,7 +160,7 @@ def pressure_at_height(
     ----------
     .. [1] ISO 2533:1975, Standard Atmosphere: hydrostatic equation with linear temperature.
     """
-    p, T = _checked_pressure(pressure), _checked_temperature(temperature)
+    p, T = _checked_pressure(pressure), kelvin("temperature", temperature)
     height_difference = floats(height_difference)
     ratio = 1.0 - STANDARD_LAPSE_RATE * height_difference / T
     refuse(
@@ -200,7 +198,7 @@ def water_vapour_pressure(temperature: ArrayLike) -> NDArray[np.float64]:
     ----------
     .. [1] IEC 61400-12-1, air density clause.
     """
-    T = _checked_temperature(temperature)
+    T = kelvin("temperature", temperature)
     return _VAPOUR_PRESSURE_AT_ZERO * np.exp(_VAPOUR_PRESSURE_GROWTH * T)
 
 
@@ -233,8 +231,8 @@ def relative_humidity_from_dew_point(
     ----------
     .. [1] WMO-No. 8, Guide to Instruments and Methods of Observation, annex 4.B.
     """
-    T = _checked_temperature(temperature)
-    Td = _checked_temperature(dew_point_temperature, "dew_point_temperature")
+    T = kelvin("temperature", temperature)
+    Td = kelvin("dew_point_temperature", dew_point_temperature)
     humidity = np.asarray(np.exp(_magnus_exponent(Td) - _magnus_exponent(T)))
     refuse(
         humidity > _HIGHEST_PLAUSIBLE_HUMIDITY,
@@ -273,7 +271,7 @@ def dry_air_density(temperature: ArrayLike, pressure: ArrayLike) -> NDArray[np.f
     ----------
     .. [1] IEC 61400-12-1, air density clause, dry air.
     """
-    T, B = _checked_temperature(temperature), _checked_pressure(pressure)
+    T, B = kelvin("temperature", temperature), _checked_pressure(pressure)
     return B / (GAS_CONSTANT_DRY_AIR * T)
 
 
@@ -304,7 +302,7 @@ def moist_air_density(
     ----------
     .. [1] IEC 61400-12-1, air density clause: equation with R0, Rw and the vapour pressure fit.
     """
-    T, B = _checked_temperature(temperature), _checked_pressure(pressure)
+    T, B = kelvin("temperature", temperature), _checked_pressure(pressure)
     phi = floats(relative_humidity)
     refuse(
         phi > _HIGHEST_PLAUSIBLE_HUMIDITY,
@@ -351,17 +349,6 @@ def density_speed_factor(
 def _magnus_exponent(temperature: NDArray[np.float64]) -> NDArray[np.float64]:
     t = temperature - ZERO_CELSIUS
     return _MAGNUS_FACTOR * t / (_MAGNUS_TEMPERATURE + t)
-
-
-def _checked_temperature(temperature: ArrayLike, name: str = "temperature") -> NDArray[np.float64]:
-    array = floats(temperature)
-    refuse(
-        array < _LOWEST_PLAUSIBLE_TEMPERATURE,
-        array,
-        f"{name} must be in kelvin, at least {_LOWEST_PLAUSIBLE_TEMPERATURE:g}",
-        "add 273.15 if it is in degrees Celsius",
-    )
-    return array
 
 
 def _checked_pressure(pressure: ArrayLike) -> NDArray[np.float64]:

@@ -1,0 +1,233 @@
+"""Running a study: its workbooks in order, headless, each whole or not at all.
+
+Before the first cell runs, the settings, every file they name and every parameters cell are
+checked, so that a fault in the last step is not found after minutes of work. Executed workbooks
+go to ``results/executed``; the copies in ``workbooks/``, which hold the analyst's notes, are
+never written to.
+"""
+
+from __future__ import annotations
+
+import copy
+import os
+from collections.abc import Callable, Mapping
+from pathlib import Path
+from typing import Any
+
+import nbformat
+
+from windkit.study.artifacts import first_stale_step, load_artifact
+from windkit.study.errors import StudyError
+from windkit.study.folder import Study, open_study
+from windkit.study.parameters import PARAMETERS, parameters_of_cell, refuse_unknown
+from windkit.study.reading import read_station
+from windkit.study.steps import STEPS, Step, step_named
+from windkit.study.turbine import read_curve
+
+__all__ = ["EXECUTED", "check_inputs", "executed_workbooks", "run_study"]
+
+#: Folder of the executed workbooks, under results/.
+EXECUTED = "executed"
+PARAMETERS_TAG = "parameters"
+
+#: Longest time one cell may take [s]; a kernel that died would otherwise hang the run.
+_CELL_TIMEOUT = 900
+
+Progress = Callable[[str, int, int], None]
+Parameters = Mapping[str, Mapping[str, Any]]
+
+
+def check_inputs(study: Study) -> None:
+    """Read every file the study names, so that a fault shows before anything runs.
+
+    Raises
+    ------
+    StudyError
+        At the first fault met.
+    """
+    read_curve(study)
+    for station in (study.settings.mast, *study.settings.references):
+        read_station(station, study.folder)
+
+
+def run_study(
+    folder: str | Path,
+    *,
+    from_step: str | None = None,
+    parameters: Parameters | None = None,
+    progress: Progress | None = None,
+) -> Study:
+    """Execute a study's workbooks in order.
+
+    Parameters
+    ----------
+    folder : str or Path
+        The study folder.
+    from_step : str, optional
+        First step to run; those before it must stand on today's inputs.
+    parameters : mapping, optional
+        Values for the parameters cells, by workbook stem and name.
+    progress : callable, optional
+        Called as ``progress(workbook, cells done, cells in all)``.
+
+    Returns
+    -------
+    Study
+        The study as it was opened.
+
+    Raises
+    ------
+    StudyError
+        If an input, a parameter or a cell is at fault; steps that were finished keep their
+        artifacts, the others keep those they had.
+    """
+    study = open_study(folder)
+    given = parameters or {}
+    steps = STEPS[STEPS.index(step_named(from_step)) :] if from_step else STEPS
+    for workbook, values in given.items():
+        if workbook not in PARAMETERS:
+            raise StudyError.of(
+                met=f"there is no workbook '{workbook}'",
+                rule=f"the workbooks are {', '.join(PARAMETERS)}",
+                remedy="write one of these names before the point",
+            )
+        refuse_unknown(workbook, values)
+    notebooks = {step.name: _read_workbook(study, step) for step in steps}
+    _refuse_stale_before(study, steps[0])
+    check_inputs(study)
+    for step in steps:
+        _execute(study, step, notebooks[step.name], given.get(step.workbook, {}), progress)
+        load_artifact(study, step.name)  # a workbook that did not write its artifact is a fault
+    return study
+
+
+def executed_workbooks(study: Study) -> list[Path]:
+    """The executed workbooks in order; a missing one is refused."""
+    files = [study.results / EXECUTED / f"{step.workbook}.ipynb" for step in STEPS]
+    for file in files:
+        if not file.is_file():
+            raise StudyError.of(
+                file=f"results/{EXECUTED}/{file.name}",
+                met="this workbook has not been run",
+                rule="a handover holds all workbooks, executed",
+                remedy=f"run `sitestudy run {study.folder.name}`",
+            )
+    return files
+
+
+def _refuse_stale_before(study: Study, first: Step) -> None:
+    stale = first_stale_step(study)
+    if stale is not None and STEPS.index(step_named(stale)) < STEPS.index(first):
+        raise StudyError.of(
+            file=f"results/{stale}",
+            met=f"the run was to begin at '{first.name}', but '{stale}' before it is not up to date",
+            rule="each step stands on those before it",
+            remedy=f"run `sitestudy run {study.folder.name} --from {stale}`",
+        )
+
+
+def _read_workbook(study: Study, step: Step) -> nbformat.NotebookNode:
+    name = f"workbooks/{step.workbook}.ipynb"
+    file = study.folder / name
+    if not file.is_file():
+        raise StudyError.of(
+            file=name,
+            met="the workbook is not there",
+            rule="a study holds its own copy of each workbook",
+            remedy="copy it from the templates, or make a new study with `sitestudy new DIR`",
+        )
+    try:
+        notebook = nbformat.read(file, as_version=4)
+    except Exception as error:
+        raise StudyError.of(
+            file=name,
+            met=f"it is not a readable notebook ({type(error).__name__})",
+            rule="workbooks are Jupyter notebooks, format 4",
+            remedy="restore it from your own copy or from the template",
+        ) from None
+    cells = [c for c in notebook.cells if PARAMETERS_TAG in c.metadata.get("tags", [])]
+    if len(cells) != 1:
+        raise StudyError.of(
+            file=name,
+            met=f"{len(cells)} cells are tagged '{PARAMETERS_TAG}'",
+            rule="a workbook has exactly one parameters cell",
+            remedy="tag one cell in the property inspector of JupyterLab",
+        )
+    parameters_of_cell(step.workbook, cells[0].source)
+    return notebook
+
+
+def _execute(
+    study: Study,
+    step: Step,
+    notebook: nbformat.NotebookNode,
+    values: Mapping[str, Any],
+    progress: Progress | None,
+) -> None:
+    # Heavy and only needed to run: nbclient pulls in the kernel machinery.
+    from nbclient import NotebookClient
+    from nbclient.exceptions import CellExecutionError, CellTimeoutError, DeadKernelError
+    from traitlets.config import Config
+
+    notebook = copy.deepcopy(notebook)
+    _inject(notebook, values)
+    total = len(notebook.cells)
+
+    def report(cell: Any, cell_index: int) -> None:
+        if progress is not None:
+            progress(step.workbook, cell_index + 1, total)
+
+    client = NotebookClient(
+        notebook,
+        kernel_name="python3",
+        timeout=_CELL_TIMEOUT,
+        record_timing=False,
+        shutdown_kernel="immediate",
+        resources={"metadata": {"path": str(study.folder / "workbooks")}},
+        on_cell_complete=report,
+        config=Config({"KernelManager": {"transport_encryption": "auto"}}),
+    )
+    try:
+        client.execute()
+    except CellExecutionError as error:
+        if error.ename == StudyError.__name__:
+            raise StudyError(error.evalue) from None
+        kept = _write(study.results / EXECUTED / f"{step.workbook}.failed.ipynb", notebook)
+        raise StudyError.of(
+            file=f"workbooks/{step.workbook}.ipynb",
+            met=f"a cell ended with {error.ename}: {error.evalue}",
+            rule="a workbook runs from top to bottom in a fresh kernel",
+            remedy=f"the run so far is kept in results/{EXECUTED}/{kept.name}; mend the cell in "
+            f"`sitestudy lab {study.folder.name}`",
+        ) from None
+    except (CellTimeoutError, DeadKernelError) as error:
+        raise StudyError.of(
+            file=f"workbooks/{step.workbook}.ipynb",
+            met=f"the kernel gave no answer ({type(error).__name__})",
+            rule=f"a cell ends within {_CELL_TIMEOUT} s",
+            remedy="see whether memory ran out, and run the workbook by hand",
+        ) from None
+    _write(study.results / EXECUTED / f"{step.workbook}.ipynb", notebook)
+    (study.results / EXECUTED / f"{step.workbook}.failed.ipynb").unlink(missing_ok=True)
+
+
+def _inject(notebook: nbformat.NotebookNode, values: Mapping[str, Any]) -> None:
+    if not values:
+        return
+    place = next(
+        index
+        for index, cell in enumerate(notebook.cells)
+        if PARAMETERS_TAG in cell.metadata.get("tags", [])
+    )
+    lines = ["# set for this run"] + [f"{name} = {value!r}" for name, value in values.items()]
+    cell = nbformat.v4.new_code_cell("\n".join(lines), metadata={"tags": ["injected-parameters"]})
+    cell["id"] = "injected-parameters"  # a random id would make two equal runs differ
+    notebook.cells.insert(place + 1, cell)
+
+
+def _write(file: Path, notebook: nbformat.NotebookNode) -> Path:
+    file.parent.mkdir(parents=True, exist_ok=True)
+    part = file.with_suffix(".part")
+    nbformat.write(notebook, part)
+    os.replace(part, file)
+    return file

@@ -1,0 +1,291 @@
+"""What a person decides: `study.toml`, validated as a whole before anything runs.
+
+Here is the shape of the file below the stations (those are in `stations`), the reading of it,
+and the one translation of validation errors into messages. What the steps do with the values
+is not here.
+"""
+
+from __future__ import annotations
+
+import datetime as dt
+import json
+import tomllib
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Any, Literal
+
+from pydantic import (
+    BaseModel,
+    ConfigDict,
+    Field,
+    ValidationError,
+    field_validator,
+    model_validator,
+)
+
+from windkit.kernels.losses import LOSS_GROUPS
+from windkit.study.checks.thresholds import CheckSettings
+from windkit.study.errors import StudyError
+from windkit.study.stations import StationSettings
+
+__all__ = [
+    "SCHEMA_VERSION",
+    "SETTINGS_FILE",
+    "UNCERTAINTY_GROUPS",
+    "LongTermSettings",
+    "LossSettings",
+    "ReferenceSettings",
+    "ScreeningSettings",
+    "Settings",
+    "SiteSettings",
+    "StudyIdentity",
+    "TurbinePosition",
+    "TurbineSettings",
+    "UncertaintySettings",
+    "parse_settings",
+    "read_settings",
+    "with_overrides",
+]
+
+SETTINGS_FILE = "study.toml"
+SCHEMA_VERSION = 1
+
+#: Groups of the open IEC 61400-15-2 draft, in its order; `plant_performance` is on energy.
+UNCERTAINTY_GROUPS = (
+    "measurement",
+    "historical_wind_resource",
+    "yearly_variability",
+    "vertical_extrapolation",
+    "horizontal_extrapolation",
+    "plant_performance",
+)
+
+Varies = Literal["static", "yearly"]
+
+
+class _Section(BaseModel):
+    """A table of the file: unknown keys are refused, values are kept as written."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True, allow_inf_nan=False)
+
+
+class StudyIdentity(_Section):
+    """Who asks, who answers, which revision."""
+
+    title: str = Field(min_length=1)
+    client: str = ""
+    analyst: str = ""
+    revision: int = Field(default=0, ge=0)
+    reason_for_revision: str = "first issue"
+    issue_date: dt.date
+
+
+class SiteSettings(_Section):
+    """Where the mast stands."""
+
+    name: str = Field(min_length=1)
+    country: str = ""
+    latitude_deg: float = Field(ge=-90, le=90)
+    longitude_deg: float = Field(ge=-180, le=180)
+    elevation_m: float = Field(ge=-430, le=6000)
+
+
+class ScreeningSettings(_Section):
+    """A rough wind figure from before any measurement."""
+
+    mean_wind_speed_m_s: float = Field(gt=0, le=20)
+    height_m: float = Field(gt=0, le=300)
+    weibull_k: float = Field(default=2.0, ge=1.0, le=4.0)
+    shear_exponent: float = Field(default=1 / 7, ge=-0.2, le=0.8)
+    standard_uncertainty: float = Field(gt=0, lt=1)
+    basis: str = Field(min_length=1)
+
+
+class ReferenceSettings(StationSettings):
+    """A long record from near the site."""
+
+    kind: Literal["station", "gridded"]
+
+
+class LongTermSettings(_Section):
+    """How the campaign is carried to the long term."""
+
+    reference: str = Field(min_length=1)
+    method: Literal["ratio", "linear_regression", "variance_ratio"] = "variance_ratio"
+    by_sector: bool = True
+    sector_count: int = Field(default=12, ge=4, le=36)
+    min_hours_per_sector: int = Field(default=200, ge=20)
+    samples_per_hour_share: float = Field(default=5 / 6, gt=0, le=1)
+    yearly_variability: Literal["from_reference"] | float = "from_reference"
+    seed: int = Field(default=1, ge=0)
+
+    @field_validator("yearly_variability")
+    @classmethod
+    def _plausible(cls, value: str | float) -> str | float:
+        if isinstance(value, float) and not 0 < value < 0.5:
+            raise ValueError("must be a fraction between 0 and 0.5, such as 0.06 for 6 %")
+        return value
+
+
+class TurbineSettings(_Section):
+    """The machine, as its maker declares it."""
+
+    name: str = Field(min_length=1)
+    curve_file: str
+    curve_air_density_kg_m3: float = Field(default=1.225, ge=0.6, le=1.4)
+    curve_source: str = Field(min_length=1)
+    hub_height_m: float = Field(gt=5, le=300)
+    rotor_diameter_m: float = Field(gt=0.5, le=350)
+    rated_power_kw: float = Field(gt=0)
+    cut_out_m_s: float = Field(default=25.0, gt=5, le=50)
+
+
+class TurbinePosition(_Section):
+    """One turbine of the layout."""
+
+    name: str = Field(min_length=1)
+    easting_m: float
+    northing_m: float
+    elevation_m: float = Field(ge=-430, le=6000)
+    speed_factor: float = Field(default=1.0, gt=0.3, lt=2.0)
+    basis: str = Field(default="assumed equal to the mast", min_length=1)
+
+
+class LossSettings(_Section):
+    """One loss, as a fraction of the energy that reaches it."""
+
+    group: str
+    name: str = Field(min_length=1)
+    loss: float = Field(ge=0, lt=1)
+    varies: Varies = "static"
+    basis: str = Field(min_length=1)
+
+    @field_validator("group")
+    @classmethod
+    def _known(cls, value: str) -> str:
+        if value not in LOSS_GROUPS:
+            raise ValueError(f"must be one of {', '.join(LOSS_GROUPS)}")
+        return value
+
+
+class UncertaintySettings(_Section):
+    """One uncertainty as a standard deviation, a fraction of wind speed or of energy."""
+
+    group: str
+    name: str = Field(min_length=1)
+    of: Literal["wind_speed", "energy"]
+    standard_uncertainty: float = Field(ge=0, lt=1)
+    varies: Varies = "static"
+    basis: str = Field(min_length=1)
+
+    @field_validator("group")
+    @classmethod
+    def _known(cls, value: str) -> str:
+        if value not in UNCERTAINTY_GROUPS:
+            raise ValueError(f"must be one of {', '.join(UNCERTAINTY_GROUPS)}")
+        return value
+
+
+class Settings(_Section):
+    """The whole of `study.toml`."""
+
+    schema_version: Literal[1]
+    study: StudyIdentity
+    site: SiteSettings
+    screening: ScreeningSettings
+    mast: StationSettings
+    references: list[ReferenceSettings] = Field(min_length=1)
+    checks: CheckSettings = Field(default_factory=CheckSettings)
+    long_term: LongTermSettings
+    turbine: TurbineSettings
+    layout: list[TurbinePosition] = Field(min_length=1)
+    losses: list[LossSettings] = Field(default_factory=list)
+    uncertainties: list[UncertaintySettings] = Field(default_factory=list)
+
+    @model_validator(mode="after")
+    def _hangs_together(self) -> Settings:
+        names = [reference.name for reference in self.references]
+        _refuse_repeats(names, "references")
+        _refuse_repeats([position.name for position in self.layout], "layout")
+        if self.long_term.reference not in names:
+            raise ValueError(
+                f"[long_term] reference is '{self.long_term.reference}', but the references are "
+                f"{', '.join(names)}; write one of these names"
+            )
+        return self
+
+    def reference(self, name: str) -> ReferenceSettings:
+        """The reference of that name (the file was checked to have it)."""
+        return next(reference for reference in self.references if reference.name == name)
+
+
+def _refuse_repeats(names: list[str], where: str) -> None:
+    for name in names:
+        if names.count(name) > 1:
+            raise ValueError(f"[[{where}]] name '{name}' stands more than once; names must differ")
+
+
+def read_settings(file: Path) -> dict[str, Any]:
+    """Read `study.toml` as plain values, or say at which line it is not TOML."""
+    if not file.is_file():
+        raise StudyError.of(
+            file=file.name,
+            met=f"there is no {file.name} in {file.parent}",
+            rule=f"a study is a folder with a {file.name} in it",
+            remedy="name the study's folder, or make one with `sitestudy new DIR`",
+        )
+    try:
+        return tomllib.loads(file.read_text(encoding="utf-8"))
+    except UnicodeDecodeError as error:
+        raise StudyError.of(
+            file=file.name,
+            met=f"byte {error.start} is not UTF-8 text",
+            rule="the file is TOML in UTF-8",
+            remedy="save it again with the encoding set to UTF-8",
+        ) from None
+    except tomllib.TOMLDecodeError as error:
+        raise StudyError.of(
+            file=file.name,
+            met=str(error),
+            rule="the file must be valid TOML: text in quotes, `key = value`, one a line",
+            remedy="mend that line; a key may stand only once in its table",
+        ) from None
+
+
+def with_overrides(values: Mapping[str, Any], overrides: Mapping[str, Any]) -> dict[str, Any]:
+    """The same plain values with `section.key` set anew, as a workbook's parameters ask."""
+    merged = {
+        key: dict(value) if isinstance(value, dict) else value for key, value in values.items()
+    }
+    for path, value in overrides.items():
+        section, key = path.split(".")
+        merged.setdefault(section, {})[key] = value
+    return merged
+
+
+def parse_settings(values: Mapping[str, Any], *, file: str = SETTINGS_FILE) -> Settings:
+    """Validate plain values; every fault found is named with key, value, rule and remedy."""
+    try:
+        return Settings.model_validate(values)
+    except ValidationError as error:
+        faults = [_explain(fault) for fault in error.errors()]
+        shown = faults[:8] + ([f"... and {len(faults) - 8} more"] if len(faults) > 8 else [])
+        raise StudyError("\n".join(f"{file}: {fault}" for fault in shown)) from None
+
+
+def _explain(fault: Any) -> str:
+    """One validation fault as key, value met, rule, remedy."""
+    key = ".".join(
+        f"[{part + 1}]" if isinstance(part, int) else str(part) for part in fault["loc"]
+    ).replace(".[", "[")
+    rule, kind = fault["msg"].removeprefix("Value error, "), fault["type"]
+    if kind == "missing":
+        return f"{key}: not given; the key is required and never guessed; add a line for it"
+    if kind == "extra_forbidden":
+        return f"{key}: unknown key; only keys of the template are read; mend or remove it"
+    if not key:
+        return rule
+    met = fault["input"]
+    shown = json.dumps(met, default=str, ensure_ascii=False)
+    shown = shown if len(shown) <= 80 else shown[:77] + "..."
+    return f"{key}: is {shown}; {rule[0].lower() + rule[1:]}; write a value that keeps this rule"

@@ -1,0 +1,200 @@
+"""Step 5, uncertainty: from P50 to the levels that are exceeded with a stated probability.
+
+What makes the spread is listed one cause a row, in wind speed and in energy, with the local
+sensitivity between them; only what is drawn anew each year shrinks with the years.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+
+from windkit.kernels.exceedance import (
+    combine_in_quadrature,
+    exceedance_level,
+    exceedance_table,
+    total_uncertainty,
+    wind_to_energy,
+)
+from windkit.study.artifacts import Outcome, Row, load_artifact
+from windkit.study.folder import Study
+
+__all__ = ["PROBABILITIES", "YEARS", "Uncertainty", "assess_uncertainty"]
+
+YEARS = (1, 10, 20)
+PROBABILITIES = (0.5, 0.75, 0.9, 0.95, 0.99)
+
+#: Period and level that "what would narrow it" is stated for: the ten-year P90 of lenders.
+_HEADLINE_YEARS = 10
+_HEADLINE_PROBABILITY = 0.9
+
+
+@dataclass(frozen=True)
+class Uncertainty:
+    """What the last step found.
+
+    Attributes
+    ----------
+    p50 : float
+        Net energy [MWh/year].
+    parts : DataFrame
+        One row a cause: group, name, of, varies, standard uncertainty of its own quantity and of
+        energy, share of the ten-year variance, basis.
+    narrowing : DataFrame
+        Ten-year P90 if one cause were halved [MWh/year].
+    levels : DataFrame
+        One row a period: years, standard uncertainty, P50 to P99 [MWh/year].
+    totals : dict of str to float
+        Standard uncertainty of energy by what it is of: one year, ten years [1].
+    outcome : Outcome
+        Figures of merit, tables and what was found.
+    """
+
+    p50: float
+    parts: pd.DataFrame
+    narrowing: pd.DataFrame
+    levels: pd.DataFrame
+    totals: dict[str, float]
+    outcome: Outcome
+
+    @property
+    def spread(self) -> dict[float, float]:
+        """Standard uncertainty of the mean of so many years [1]."""
+        return dict(zip(self.levels["years"], self.levels["standard_uncertainty"], strict=True))
+
+    @property
+    def level_table(self) -> pd.DataFrame:
+        """Levels alone, by years [MWh/year]."""
+        return self.levels.set_index("years").drop(columns="standard_uncertainty")
+
+
+def assess_uncertainty(study: Study) -> Uncertainty:
+    """Combine the stated and the computed uncertainties into P50 to P99.
+
+    Returns
+    -------
+    Uncertainty
+    """
+    long_term, energy = load_artifact(study, "long_term"), load_artifact(study, "yield")
+    p50 = energy.number("energy.net_p50_mwh_per_year")
+    sensitivity = energy.number("energy.sensitivity")
+    parts = _parts(study, long_term, sensitivity)
+    static, yearly = _spread(parts, "static"), _spread(parts, "yearly")
+    table = exceedance_table(p50, static, yearly, years=YEARS, probabilities=PROBABILITIES)
+    names = [f"P{round(100 * probability)}" for probability in PROBABILITIES]
+    levels = pd.DataFrame(table.level, columns=names)
+    levels.insert(0, "years", list(YEARS))
+    levels.insert(1, "standard_uncertainty", table.standard_uncertainty)
+    rows = [
+        Row(
+            f"exceedance.{years}.{name}_mwh_per_year",
+            f"{name}, mean of {years} year{'s' if years > 1 else ''}",
+            float(table.level[index, names.index(name)]),
+            "MWh/year",
+            f"normal distribution, standard uncertainty {table.standard_uncertainty[index]:.1%}",
+        )
+        for index, years in enumerate(YEARS)
+        for name in names
+    ]
+    rows += [
+        Row(
+            "uncertainty.static", "Standard uncertainty that is the same every year", static, "1",
+            "of energy; quadrature of the static causes, taken as independent", as_percent=True,
+        ),
+        Row(
+            "uncertainty.yearly", "Standard uncertainty that is drawn anew each year", yearly, "1",
+            "of energy in any one year; quadrature of the yearly causes", as_percent=True,
+        ),
+    ]  # fmt: skip
+    narrowing = _narrowing(p50, parts)
+    p90 = {
+        years: float(table.level[index, names.index("P90")]) for index, years in enumerate(YEARS)
+    }
+    leading = parts.sort_values("share_of_variance", ascending=False).iloc[0]
+    said = {
+        "parts": f"The largest part of the ten-year spread is {leading['name']}, with "
+        f"{leading['share_of_variance']:.0%} of the variance. Together the static causes come to "
+        f"{static:.1%} of energy; one year's windiness and operation add {yearly:.1%}.",
+        "levels": f"P50 is {p50:,.0f} MWh a year. P90 is {p90[1]:,.0f} MWh for a single year, "
+        f"{p90[10]:,.0f} for the mean of ten and {p90[20]:,.0f} for the mean of twenty.",
+        "narrowing": f"Halving the uncertainty of {narrowing['halved'][0]} would raise the "
+        f"ten-year P90 by {narrowing['gain_mwh_per_year'][0]:,.0f} MWh a year; no other single "
+        "cause is worth as much.",
+    }
+    return Uncertainty(
+        p50=p50,
+        parts=parts,
+        narrowing=narrowing,
+        levels=levels,
+        totals={
+            "static causes together": static,
+            "one year": float(table.standard_uncertainty[0]),
+            "mean of ten years": float(table.standard_uncertainty[YEARS.index(_HEADLINE_YEARS)]),
+        },
+        outcome=Outcome(
+            "uncertainty",
+            rows,
+            {"levels": levels, "parts": parts, "narrowing": narrowing},
+            said,
+        ),
+    )
+
+
+def _parts(study: Study, long_term: Outcome, sensitivity: float) -> pd.DataFrame:
+    """Every cause as a row, wind and energy side by side."""
+    causes = [
+        (
+            "historical_wind_resource", "long-term correction", "wind_speed", "static",
+            long_term.number("long_term.standard_uncertainty"), "computed in step 3",
+        )
+    ]  # fmt: skip
+    stated = study.settings.uncertainties
+    if not any(cause.group == "yearly_variability" for cause in stated):
+        causes.append(
+            (
+                "yearly_variability", "windiness of one year", "wind_speed", "yearly",
+                long_term.number("long_term.yearly_variability"), "computed in step 3",
+            )
+        )  # fmt: skip
+    causes += [
+        (cause.group, cause.name, cause.of, cause.varies, cause.standard_uncertainty, cause.basis)
+        for cause in stated
+    ]
+    parts = pd.DataFrame(
+        causes, columns=["group", "name", "of", "varies", "standard_uncertainty", "basis"]
+    )
+    of_wind = parts["of"] == "wind_speed"
+    own = parts["standard_uncertainty"].to_numpy(dtype=float)
+    in_energy = np.where(of_wind, wind_to_energy(own, sensitivity), own)
+    weight = np.where(parts["varies"] == "yearly", 1 / _HEADLINE_YEARS, 1.0)
+    variance = in_energy**2 * weight
+    parts.insert(5, "energy_standard_uncertainty", in_energy)
+    total = variance.sum()
+    parts.insert(6, "share_of_variance", variance / total if total > 0 else variance)
+    return parts
+
+
+def _spread(parts: pd.DataFrame, varies: str) -> float:
+    chosen = parts.loc[parts["varies"] == varies, "energy_standard_uncertainty"]
+    return float(combine_in_quadrature(chosen.to_numpy(dtype=float))) if len(chosen) else 0.0
+
+
+def _narrowing(p50: float, parts: pd.DataFrame) -> pd.DataFrame:
+    """What the headline level would gain if one cause were halved."""
+
+    def headline(table: pd.DataFrame) -> float:
+        spread = total_uncertainty(
+            _spread(table, "static"), _spread(table, "yearly"), _HEADLINE_YEARS
+        )
+        return float(exceedance_level(p50, spread, _HEADLINE_PROBABILITY))
+
+    today = headline(parts)
+    rows = []
+    for index in parts.index:
+        halved = parts.copy()
+        halved.loc[index, "energy_standard_uncertainty"] /= 2
+        rows.append((parts.loc[index, "name"], headline(halved), headline(halved) - today))
+    table = pd.DataFrame(rows, columns=["halved", "p90_mwh_per_year", "gain_mwh_per_year"])
+    return table.sort_values("gain_mwh_per_year", ascending=False, ignore_index=True)

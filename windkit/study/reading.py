@@ -23,7 +23,7 @@ from windkit.study.errors import StudyError
 from windkit.study.paths import file_in_study
 from windkit.study.stamps import interval_of, on_the_clock, read_stamps, to_starts
 from windkit.study.stations import ChannelSettings, SensorPeriod, StationSettings
-from windkit.study.text_files import RawTable, listed, missing_column, read_text
+from windkit.study.text_files import RawTable, listed, missing_column, missing_numbers, read_text
 
 __all__ = ["Reading", "read_station"]
 
@@ -95,7 +95,6 @@ def read_station(settings: StationSettings, folder: Path) -> Reading:
         hashes = {written: beside.submit(_sha256, path) for written, path in paths.items()}
         tables = [_read_table(path, written, settings) for written, path in paths.items()]
         stamps = [read_stamps(table, settings) for table in tables]
-        sha256 = {written: task.result() for written, task in hashes.items()}
     local = np.concatenate(stamps)
     starts = np.cumsum([0, *(len(each) for each in stamps)])
 
@@ -135,7 +134,7 @@ def read_station(settings: StationSettings, folder: Path) -> Reading:
         rows_read=len(local) + sum(len(table.broken) for table in tables),
         rows_kept=len(frame),
         set_aside=set_aside,
-        sha256=sha256,
+        sha256={written: task.result() for written, task in hashes.items()},
         expected_count=int((frame.index[-1] - frame.index[0]) / interval_of(settings)) + 1,
         notes=tuple(note for table in tables for note in table.notes),
     )
@@ -195,11 +194,8 @@ def _read_parquet(path: Path, written: str, settings: StationSettings) -> RawTab
                 remedy="store the file again with that column as numbers",
             )
         values = np.array(table[name].cast(pa.float64()).to_numpy(), dtype=np.float64)
-        for text in settings.missing:
-            try:
-                values[values == float(text.replace(settings.decimal, "."))] = np.nan
-            except ValueError:
-                continue
+        for number in missing_numbers(settings):
+            values[values == number] = np.nan
         infinite = np.flatnonzero(np.isinf(values))
         if len(infinite):
             raise StudyError.of(
@@ -229,10 +225,11 @@ def _converted(
 ) -> NDArray[np.float64]:
     """Values in the library's unit: calibration first, in the column's unit, then the unit."""
     values = _recalibrated(recorded, local, channel, settings)
+    zero, one = to_si([0.0, 1.0], channel.unit, channel.quantity)
     if channel.statistic == "sd":
-        zero, one = to_si([0.0, 1.0], channel.unit, channel.quantity)
         return values * (one - zero)  # a spread has no offset
-    values = to_si(values, channel.unit, channel.quantity)
+    if (zero, one) != (0.0, 1.0):
+        values = to_si(values, channel.unit, channel.quantity)
     if not channel.is_direction:
         return values
     with np.errstate(invalid="ignore"):

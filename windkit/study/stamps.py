@@ -17,6 +17,7 @@ import pyarrow as pa
 import pyarrow.compute as pc
 from numpy.typing import NDArray
 
+from windkit.study.clock_changes import Seam, repeated_hours, skipped_hours
 from windkit.study.errors import StudyError
 from windkit.study.stations import StationSettings
 from windkit.study.text_files import RawTable, listed
@@ -224,8 +225,9 @@ def on_the_clock(
     Raises
     ------
     StudyError
-        If stamps are unsorted or repeated and the study does not say what to do, if they do not
-        stand on the declared interval, or if a few of them lie far from the rest.
+        If stamps are unsorted or repeated and the study does not say what to do, if the clock
+        followed daylight saving, if stamps do not stand on the declared interval, or if a few
+        of them lie far from the rest.
     """
     inside = _in_period(local, settings)
     set_aside = [(int(at), "outside use_from to use_until") for at in np.flatnonzero(~inside)]
@@ -236,6 +238,11 @@ def on_the_clock(
             rule="a record has at least two rows, or its interval cannot be checked",
             remedy="check that files holds the whole record, and use_from and use_until",
         )
+    seams_matter = settings.daylight_saving_seams == "refuse"
+    step, ends = interval_of(settings).to_timedelta64(), settings.stamp == "end"
+    if seams_matter:
+        again = repeated_hours(local[kept], step)
+        _refuse_seams(again, "an hour again", local, kept, settings, place)
     steps = np.diff(local[kept])
     backward = np.flatnonzero(steps < np.timedelta64(0, "us"))
     if len(backward):
@@ -249,8 +256,7 @@ def on_the_clock(
                 met=f"{settings.name}: stamps run backward {len(backward)} times: {listed(found)}",
                 rule="stamps rise from row to row, file after file",
                 remedy="put files in the order of time; if rows are only out of order, write "
-                'unsorted_stamps = "sort"; if an hour repeats in autumn, the clock followed '
-                "daylight saving and the file must be exported again with a fixed offset",
+                'unsorted_stamps = "sort"',
             )
         kept = kept[np.argsort(local[kept], kind="stable")]
         steps = np.diff(local[kept])
@@ -269,9 +275,35 @@ def on_the_clock(
             )
         set_aside += [(int(kept[at + 1]), "stamp stands twice, first row kept") for at in repeated]
         kept = np.delete(kept, repeated + 1)
+    if seams_matter:
+        left_out = skipped_hours(local[kept], step, ends=ends)
+        _refuse_seams(left_out, "an hour left out", local, kept, settings, place)
     _refuse_far_blocks(local, kept, settings, place)
     _refuse_off_grid(local, kept, settings, place)
     return kept, set_aside
+
+
+def _refuse_seams(
+    seams: list[Seam],
+    what: str,
+    local: Stamps,
+    kept: NDArray[np.intp],
+    settings: StationSettings,
+    place: Callable[[int], str],
+) -> None:
+    if not seams:
+        return
+    found = [
+        f"{place(int(kept[at]))} has {_shown(local[kept[at]])} ({custom} custom)"
+        for at, custom in seams
+    ]
+    raise StudyError.of(
+        met=f"{settings.name}: the stamps have {what} where clocks change: {listed(found)}",
+        rule="a record keeps one offset from UTC; with daylight saving nobody can tell which "
+        "hour is which",
+        remedy="export the file again with a fixed offset; write daylight_saving_seams = "
+        '"accept" only if the logger\'s settings show that its clock did not change',
+    )
 
 
 def _refuse_far_blocks(

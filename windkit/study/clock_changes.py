@@ -87,7 +87,11 @@ def skipped_hours(
                 found.setdefault(custom, []).append(jumps[jump])
     # In a record with many gaps one of them falls there by chance; most springs do not.
     sure = {custom for custom, rows in found.items() if 2 * len(rows) >= covered[custom]}
-    return sorted((row, custom) for custom in sure for row in found[custom])
+    seams: dict[int, str] = {}
+    for custom in sorted(sure):
+        for row in found[custom]:
+            seams.setdefault(row, custom)
+    return sorted(seams.items())
 
 
 def repeated_hours(local: NDArray[np.datetime64], interval: np.timedelta64) -> list[Seam]:

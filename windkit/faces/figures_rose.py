@@ -13,11 +13,13 @@ from typing import Any
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.patches import Patch
+from matplotlib.patheffects import withStroke
 from numpy.typing import ArrayLike
 
 from windkit.faces.look import (
     FAINT,
     GRID,
+    INK,
     MUTED,
     class_colours,
     in_house_style,
@@ -145,8 +147,11 @@ def _dress_rose(ax: Any, total: int, calm_threshold: float) -> None:
         [f"{100 * ring:g} %" for ring in rings],
         angle=ax.radii_angle,
         fontsize=7.5,
-        color=MUTED,
+        color=INK,
     )
+    for label in ax.get_yticklabels():
+        # Petals may reach below the words.
+        label.set_path_effects([withStroke(linewidth=2.5, foreground="white")])
     ax.set_xticks(np.radians(np.arange(0, 360, 45)), ["E", "NE", "N", "NW", "W", "SW", "S", "SE"])
     ax.set_axisbelow(True)
     ax.xaxis.grid(visible=True, color=GRID)

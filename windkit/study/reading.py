@@ -24,6 +24,7 @@ from windkit.study.paths import file_in_study
 from windkit.study.stamps import interval_of, on_the_clock, read_stamps, to_starts
 from windkit.study.stations import ChannelSettings, SensorPeriod, StationSettings
 from windkit.study.text_files import RawTable, listed, missing_column, missing_numbers, read_text
+from windkit.study.text_source import refuse_too_large
 
 __all__ = ["Reading", "read_station"]
 
@@ -91,6 +92,9 @@ def read_station(settings: StationSettings, folder: Path) -> Reading:
         If a file, a column, a value or a stamp does not fit what is declared.
     """
     paths = {written: file_in_study(folder, written, key="files") for written in settings.files}
+    for written, path in paths.items():
+        if not _is_parquet(path):
+            refuse_too_large(path, written)  # before time is spent on its hash
     with ThreadPoolExecutor(max_workers=1) as beside:
         hashes = {written: beside.submit(_sha256, path) for written, path in paths.items()}
         tables = [_read_table(path, written, settings) for written, path in paths.items()]
@@ -145,6 +149,10 @@ def _sha256(path: Path) -> str:
         return hashlib.file_digest(stream, "sha256").hexdigest()
 
 
+def _is_parquet(path: Path) -> bool:
+    return path.suffix.lower() in {".parquet", ".pq"}
+
+
 def _read_table(path: Path, written: str, settings: StationSettings) -> RawTable:
     if path.stat().st_size == 0:
         raise StudyError.of(
@@ -153,7 +161,7 @@ def _read_table(path: Path, written: str, settings: StationSettings) -> RawTable
             rule="a file has a header line and rows",
             remedy="ask for the file again, or take it out of files",
         )
-    if path.suffix.lower() in {".parquet", ".pq"}:
+    if _is_parquet(path):
         return _read_parquet(path, written, settings)
     return read_text(path, written, settings)
 

@@ -232,12 +232,7 @@ def on_the_clock(
     inside = _in_period(local, settings)
     set_aside = [(int(at), "outside use_from to use_until") for at in np.flatnonzero(~inside)]
     kept = np.flatnonzero(inside)
-    if len(kept) < 2:
-        raise StudyError.of(
-            met=f"{settings.name}: {len(kept)} of {len(local)} rows are left to use",
-            rule="a record has at least two rows, or its interval cannot be checked",
-            remedy="check that files holds the whole record, and use_from and use_until",
-        )
+    _refuse_too_few(kept, local, settings)
     seams_matter = settings.daylight_saving_seams == "refuse"
     step, ends = interval_of(settings).to_timedelta64(), settings.stamp == "end"
     if seams_matter:
@@ -275,12 +270,22 @@ def on_the_clock(
             )
         set_aside += [(int(kept[at + 1]), "stamp stands twice, first row kept") for at in repeated]
         kept = np.delete(kept, repeated + 1)
+        _refuse_too_few(kept, local, settings)
     if seams_matter:
         left_out = skipped_hours(local[kept], step, ends=ends)
         _refuse_seams(left_out, "an hour left out", local, kept, settings, place)
     _refuse_far_blocks(local, kept, settings, place)
     _refuse_off_grid(local, kept, settings, place)
     return kept, set_aside
+
+
+def _refuse_too_few(kept: NDArray[np.intp], local: Stamps, settings: StationSettings) -> None:
+    if len(kept) < 2:
+        raise StudyError.of(
+            met=f"{settings.name}: {len(kept)} of {len(local)} rows are left to use",
+            rule="a record has at least two rows, or its interval cannot be checked",
+            remedy="check that files holds the whole record, and use_from and use_until",
+        )
 
 
 def _refuse_seams(

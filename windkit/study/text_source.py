@@ -23,7 +23,7 @@ import numpy as np
 from windkit.study.errors import StudyError
 from windkit.study.stations import StationSettings
 
-__all__ = ["LARGEST_TEXT", "TextSource", "open_text", "split_fields"]
+__all__ = ["LARGEST_TEXT", "TextSource", "open_text", "refuse_too_large", "split_fields"]
 
 #: Largest text, unpacked, that is read at once [bytes]; 20 years of 24 ten-minute channels take
 #: about 0.4e9. Common practice for a laptop: the columns then need about as much memory again.
@@ -130,12 +130,11 @@ def open_text(path: Path, written: str, settings: StationSettings) -> TextSource
         If the wrapper is damaged, the text too large, empty, in another encoding, or holds NUL
         bytes, or the header line is not there.
     """
+    refuse_too_large(path, written)
     packed = path.suffix.lower() in {".gz", ".zip"}
     recoded = settings.encoding.lower().replace("_", "-") not in {"utf-8", "utf8", "ascii"}
     sign = settings.delimiter.encode("utf-8")
     if not packed and not recoded and settings.delimiter != "whitespace":
-        if path.stat().st_size > LARGEST_TEXT:
-            raise _too_large(written)
         look = _look_over(path, sign)
         if look.has_newline:
             with path.open("rb") as stream:
@@ -176,7 +175,7 @@ def _unpacked(path: Path, written: str) -> bytes:
             data = _only_member(path, written)
         else:
             with path.open("rb") as plain:
-                data = plain.read(min(path.stat().st_size, LARGEST_TEXT) + 1)
+                data = plain.read()
     except (OSError, EOFError, zlib.error, zipfile.BadZipFile, RuntimeError) as error:
         raise StudyError.of(
             file=written,
@@ -187,6 +186,12 @@ def _unpacked(path: Path, written: str) -> bytes:
     if len(data) > LARGEST_TEXT:
         raise _too_large(written)
     return data
+
+
+def refuse_too_large(path: Path, written: str) -> None:
+    """Refuse a file that is larger than `LARGEST_TEXT` as it lies on disk."""
+    if path.stat().st_size > LARGEST_TEXT:
+        raise _too_large(written)
 
 
 def _too_large(written: str) -> StudyError:

@@ -17,7 +17,8 @@ from windkit.kernels.correction import (
     long_term_standard_uncertainty,
     record_extension_variance,
 )
-from windkit.kernels.estimator import merged_neighbours, sector_of
+from windkit.kernels.estimator import merged_neighbours
+from windkit.kernels.frequency import sector_index
 
 # MCP-2: correlation, concurrent values, further values (Matalas and Jacobs 1964).
 EXTENSION_CASES = [(0.9, 12, 108), (0.7, 12, 108), (0.5, 12, 108), (0.9, 10, 20), (0.3, 8, 40)]
@@ -151,7 +152,7 @@ def test_thin_sectors_take_in_their_neighbours():
 def test_the_first_sector_is_centred_on_north():
     # Common practice, and the draft IEC 61400-15-1 form: twelve sectors, the first centred on 0.
     np.testing.assert_array_equal(
-        sector_of([345.1, 0.0, 14.9, 15.1, 344.9, 360.0, np.nan], 12), [0, 0, 0, 1, 11, 0, -1]
+        sector_index([345.1, 0.0, 14.9, 15.1, 344.9, 360.0, np.nan], 12), [0, 0, 0, 1, 11, 0, -1]
     )
 
 

@@ -20,9 +20,9 @@ from windkit.kernels.estimator import (
     copy_of,
     merged_neighbours,
     refuse_constant,
-    sector_of,
     speed_and_direction,
 )
+from windkit.kernels.frequency import sector_index
 
 __all__ = [
     "BySector",
@@ -222,7 +222,7 @@ class BySector(SiteEstimator):
         speed, direction, site = speed[kept], direction[kept], site[kept]
         self.all_directions_ = copy_of(base).fit(speed, site)
         self.pair_count_ = speed.size
-        sector = sector_of(direction, self.sector_count)
+        sector = sector_index(direction, self.sector_count)
         count = np.bincount(sector[sector >= 0], minlength=self.sector_count)
         self.sector_pair_count_ = count
         self.merged_neighbours_ = merged_neighbours(count, self.min_count)
@@ -244,7 +244,7 @@ class BySector(SiteEstimator):
         if direction is None:
             raise ValueError("BySector was fitted with directions, so X needs a direction column")
         predicted = self.all_directions_.predict(speed)
-        sector = sector_of(direction, self.sector_count)
+        sector = sector_index(direction, self.sector_count)
         for index, fitted in enumerate(self.estimators_):
             inside = sector == index
             predicted[inside] = fitted.predict(speed[inside])

@@ -13,6 +13,9 @@ from typing import Any, Self
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+# The sectors of a fit are those of every table; the short name reads better beside a fit.
+from windkit.kernels.frequency import sector_index as sector_of
+
 __all__ = [
     "LEAST_PAIRS",
     "SiteEstimator",
@@ -137,15 +140,6 @@ def concurrent_pairs(
             f"{least}"
         )
     return x[kept], y[kept]
-
-
-def sector_of(wind_direction: ArrayLike, sector_count: int) -> NDArray[np.int64]:
-    """Sector of each direction [deg], 0 centred on north; -1 where the direction is NaN."""
-    direction = np.asarray(wind_direction, dtype=float)
-    known = np.isfinite(direction)
-    width = 360.0 / sector_count
-    index = np.floor((np.where(known, direction, 0.0) % 360.0 + width / 2) / width)
-    return np.where(known, index.astype(np.int64) % sector_count, -1)
 
 
 def merged_neighbours(count: ArrayLike, min_count: int) -> NDArray[np.int64]:

@@ -132,22 +132,25 @@ def save_artifact(study: Study, outcome: Outcome) -> Path:
     part = study.results / f"{step.name}.part"
     shutil.rmtree(part, ignore_errors=True)
     part.mkdir(parents=True)
-    tables = {}
-    for name, table in outcome.tables.items():
-        table.to_parquet(part / f"{name}.parquet")
-        tables[name] = digest_of_file(part / f"{name}.parquet")
-    content = {
-        "step": step.name,
-        "overrides": study.overrides,
-        "made_from": _made_from(study, step),
-        "rows": [asdict(row) for row in outcome.rows],
-        "said": outcome.said,
-        "warnings": outcome.warnings,
-        "tables": tables,
-    }
-    text = json.dumps(content, indent=1, ensure_ascii=False, default=_plain, allow_nan=False)
-    (part / _ARTIFACT_FILE).write_text(text + "\n", encoding="utf-8")
-    swap_folder(part, target)
+    try:
+        tables = {}
+        for name, table in outcome.tables.items():
+            table.to_parquet(part / f"{name}.parquet")
+            tables[name] = digest_of_file(part / f"{name}.parquet")
+        content = {
+            "step": step.name,
+            "overrides": study.overrides,
+            "made_from": _made_from(study, step),
+            "rows": [asdict(row) for row in outcome.rows],
+            "said": outcome.said,
+            "warnings": outcome.warnings,
+            "tables": tables,
+        }
+        text = json.dumps(content, indent=1, ensure_ascii=False, default=_plain, allow_nan=False)
+        (part / _ARTIFACT_FILE).write_text(text + "\n", encoding="utf-8")
+        swap_folder(part, target)
+    finally:
+        shutil.rmtree(part, ignore_errors=True)
     return target
 
 
@@ -157,9 +160,13 @@ def load_artifact(study: Study, name: str) -> Artifact:
     Raises
     ------
     StudyError
-        If the step was not run yet, its inputs changed, or a table of it was altered.
+        If the step or one it builds upon was not run yet, inputs of either changed, or a table
+        of it was altered.
     """
     step = step_named(name)
+    for earlier in STEPS:
+        if earlier.name in _ancestors(step):
+            _refuse_stale(study, earlier, _read(study, earlier))
     content = _read(study, step)
     _refuse_stale(study, step, content)
     folder = study.results / step.name
@@ -204,8 +211,26 @@ def _read(study: Study, step: Step) -> dict[str, Any]:
             rule="each step stands on those before it",
             remedy=f"run {step.workbook} first, or `sitestudy run {study.folder.name}`",
         )
-    content: dict[str, Any] = json.loads(file.read_text(encoding="utf-8"))
+    try:
+        content: dict[str, Any] = json.loads(file.read_text(encoding="utf-8"))
+    except ValueError:
+        content = {}
+    if not content.keys() >= {"overrides", "made_from", "rows", "said", "warnings", "tables"}:
+        raise StudyError.of(
+            file=f"results/{step.name}/{_ARTIFACT_FILE}",
+            met="its content is not what the step wrote",
+            rule="artifacts are written by their step only",
+            remedy=f"run `sitestudy run {study.folder.name} --from {step.name}`",
+        )
     return content
+
+
+def _ancestors(step: Step) -> set[str]:
+    """All steps that a step builds upon, near and far."""
+    found = set(step.needs)
+    for need in step.needs:
+        found |= _ancestors(step_named(need))
+    return found
 
 
 def _refuse_stale(study: Study, step: Step, content: Mapping[str, Any]) -> None:

@@ -117,8 +117,12 @@ def open_study(folder: str | Path, overrides: Mapping[str, Any] | None = None) -
             remedy="name the study's folder, or make one with `sitestudy new DIR`",
         )
     chosen = dict(overrides or {})
-    values = with_overrides(read_settings(root / SETTINGS_FILE), chosen)
-    return Study(folder=root, settings=parse_settings(values), overrides=chosen)
+    values = read_settings(root / SETTINGS_FILE)
+    settings = parse_settings(values)
+    if chosen:  # apart from the file, so that a fault is looked for where it was written
+        place = f"parameters over {SETTINGS_FILE}"
+        settings = parse_settings(with_overrides(values, chosen), file=place)
+    return Study(folder=root, settings=settings, overrides=chosen)
 
 
 def digest_of_bytes(content: bytes) -> str:

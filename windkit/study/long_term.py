@@ -47,6 +47,8 @@ LEAST_YEARS_FOR_VARIABILITY = 5
 SINGLE_MONTH_SCATTER = 0.1
 
 _HOURS_PER_YEAR_WITH_LEAP_DAYS = 8766.0
+#: What may be missing at the start of a record of whole years, our choice.
+_MISSING_FROM_WHOLE_YEARS = pd.Timedelta(days=1)
 #: Share of a year's hours that must be there for its mean to count as that year's.
 _LEAST_SHARE_OF_YEAR = 0.9
 
@@ -332,7 +334,10 @@ def _whole_years(speed: pd.Series) -> NDArray[np.bool_]:
     """The hours of the last whole number of years; all of them if there is less than one."""
     valid = speed.dropna().index
     end = valid[-1] + pd.Timedelta(hours=1)
-    years = int((end - valid[0]) / pd.Timedelta(hours=_HOURS_PER_YEAR_WITH_LEAP_DAYS) + 1e-3)
+    # By the calendar: three years without a leap day are three years too.
+    years = end.year - valid[0].year
+    if years and end - pd.DateOffset(years=years) < valid[0] - _MISSING_FROM_WHOLE_YEARS:
+        years -= 1
     start = end - pd.DateOffset(years=years) if years else valid[0]
     index = speed.index
     return np.asarray((index >= start) & (index < end) & speed.notna().to_numpy())

@@ -122,13 +122,15 @@ def examine_record(study: Study, record: Record) -> Measured:
     exponent, exponent_basis, warnings = _exponent(heights, main)
     pair, booms = _pair_ratio(frame, settings, main)
     turbulence = _turbulence(frame, settings, main)
+    # A calm lies below the threshold, as where its direction is taken out; kernels include it.
+    highest_calm = float(np.nextafter(settings.calm_below_m_s, 0.0))
     frequency = frequency_table(
         speed,
         direction,
         sector_count=study.settings.long_term.sector_count,
-        calm_threshold=settings.calm_below_m_s,
+        calm_threshold=highest_calm,
     )
-    weibull = fit_weibull(speed, calm_threshold=settings.calm_below_m_s)
+    weibull = fit_weibull(speed, calm_threshold=highest_calm)
     years = record.reading.expected_count * settings.interval_min / _MINUTES_PER_YEAR
     plain, seasonal = float(np.nanmean(speed)), float(monthly_mean.mean())
     if len(monthly_mean) < 12:
@@ -168,7 +170,7 @@ def examine_record(study: Study, record: Record) -> Measured:
         Row("measured.shear_exponent", "Shear exponent", exponent, "1", exponent_basis),
         Row(
             "measured.calm_share", "Share of calms", frequency.calm_share, "1",
-            f"speed at or below {settings.calm_below_m_s:g} m/s; counted in every total",
+            f"speed below {settings.calm_below_m_s:g} m/s; counted in every total",
             as_percent=True,
         ),
         Row(

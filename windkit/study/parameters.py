@@ -65,7 +65,7 @@ PARAMETERS: dict[str, dict[str, Parameter]] = {
 }
 
 _KERNEL_NAMES = {"In", "Out", "exit", "quit", "get_ipython", "open"}
-_PLAIN = (str, int, float, bool, list, tuple, dict, type(None))
+_PLAIN = (str, bytes, int, float, complex, list, tuple, dict, set, frozenset, type(None))
 
 
 def open_workbook(workbook: str, names: Mapping[str, Any]) -> Study:

@@ -19,7 +19,13 @@ import nbformat
 from windkit.study.artifacts import first_stale_step, load_artifact
 from windkit.study.errors import StudyError
 from windkit.study.folder import Study, open_study
-from windkit.study.parameters import PARAMETERS, parameters_of_cell, refuse_unknown
+from windkit.study.ledger import masked_by, read_ledger
+from windkit.study.parameters import (
+    PARAMETERS,
+    open_workbook,
+    parameters_of_cell,
+    refuse_unknown,
+)
 from windkit.study.reading import read_station
 from windkit.study.steps import STEPS, Step, step_named
 from windkit.study.turbine import read_curve
@@ -46,7 +52,14 @@ def check_inputs(study: Study) -> None:
         At the first fault met.
     """
     read_curve(study)
-    for station in (study.settings.mast, *study.settings.references):
+    settings = study.settings
+    places = {f"references ({each.name})": each for each in settings.references}
+    for place, station in {"mast": settings.mast, **places}.items():
+        for name in station.files:
+            study.path(name, key=f"{place}.files")
+    mast = read_station(settings.mast, study.folder)
+    masked_by(mast.frame.iloc[:0], read_ledger(study.ledger))  # its channels, before its spans
+    for station in settings.references:
         read_station(station, study.folder)
 
 
@@ -92,7 +105,15 @@ def run_study(
                 remedy="write one of these names before the point",
             )
         refuse_unknown(workbook, values)
+        if workbook not in {step.workbook for step in steps}:
+            raise StudyError.of(
+                met=f"a parameter of {workbook} is set, but the run begins at '{steps[0].name}'",
+                rule="a parameter is set for a workbook that runs",
+                remedy="leave it out, or begin at an earlier step",
+            )
     notebooks = {step.name: _read_workbook(study, step) for step in steps}
+    for step in steps:
+        _check_parameters(study, step, notebooks[step.name], given.get(step.workbook, {}))
     _refuse_stale_before(study, steps[0])
     check_inputs(study)
     for step in steps:
@@ -120,7 +141,7 @@ def _refuse_stale_before(study: Study, first: Step) -> None:
     if stale is not None and STEPS.index(step_named(stale)) < STEPS.index(first):
         raise StudyError.of(
             file=f"results/{stale}",
-            met=f"the run was to begin at '{first.name}', but '{stale}' before it is not up to date",
+            met=f"the run was to begin at '{first.name}', but '{stale}' before it is not fresh",
             rule="each step stands on those before it",
             remedy=f"run `sitestudy run {study.folder.name} --from {stale}`",
         )
@@ -153,8 +174,28 @@ def _read_workbook(study: Study, step: Step) -> nbformat.NotebookNode:
             rule="a workbook has exactly one parameters cell",
             remedy="tag one cell in the property inspector of JupyterLab",
         )
-    parameters_of_cell(step.workbook, cells[0].source)
     return notebook
+
+
+def _check_parameters(
+    study: Study, step: Step, notebook: nbformat.NotebookNode, given: Mapping[str, Any]
+) -> None:
+    """Open the study as the workbook will, so that a wrong value shows before anything runs."""
+    cell = next(c for c in notebook.cells if PARAMETERS_TAG in c.metadata.get("tags", []))
+    values = {**parameters_of_cell(step.workbook, cell.source), **given}
+    file, named = f"workbooks/{step.workbook}.ipynb", values.get("study_folder")
+    if named is None or (study.folder / "workbooks" / str(named)).resolve() != study.folder:
+        raise StudyError.of(
+            file=file,
+            key="study_folder",
+            met=f"it is {named!r}, which is not the study this workbook lies in",
+            rule="the workbooks of a study stand on that study",
+            remedy='write study_folder = ".." in its parameters cell',
+        )
+    try:
+        open_workbook(step.workbook, {**values, "study_folder": str(study.folder)})
+    except StudyError as error:
+        raise StudyError(f"{file}, {error}") from None
 
 
 def _execute(

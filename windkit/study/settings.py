@@ -8,11 +8,12 @@ is not here.
 from __future__ import annotations
 
 import datetime as dt
+import difflib
 import json
 import tomllib
 from collections.abc import Mapping
 from pathlib import Path
-from typing import Any, Literal
+from typing import Any, Literal, get_args
 
 from pydantic import (
     BaseModel,
@@ -64,9 +65,9 @@ Varies = Literal["static", "yearly"]
 
 
 class _Section(BaseModel):
-    """A table of the file: unknown keys are refused, values are kept as written."""
+    """A table of the file: unknown keys and texts in place of numbers are refused."""
 
-    model_config = ConfigDict(extra="forbid", frozen=True, allow_inf_nan=False)
+    model_config = ConfigDict(extra="forbid", frozen=True, strict=True, allow_inf_nan=False)
 
 
 class StudyIdentity(_Section):
@@ -97,7 +98,8 @@ class ScreeningSettings(_Section):
     height_m: float = Field(gt=0, le=300)
     weibull_k: float = Field(default=2.0, ge=1.0, le=4.0)
     shear_exponent: float = Field(default=1 / 7, ge=-0.2, le=0.8)
-    standard_uncertainty: float = Field(gt=0, lt=1)
+    # Above one half the low end of a normal 80 % range is hardly any wind at all.
+    standard_uncertainty: float = Field(gt=0, le=0.5)
     basis: str = Field(min_length=1)
 
 
@@ -119,11 +121,14 @@ class LongTermSettings(_Section):
     yearly_variability: Literal["from_reference"] | float = "from_reference"
     seed: int = Field(default=1, ge=0)
 
-    @field_validator("yearly_variability")
+    @field_validator("yearly_variability", mode="before")
     @classmethod
-    def _plausible(cls, value: str | float) -> str | float:
-        if isinstance(value, float) and not 0 < value < 0.5:
-            raise ValueError("must be a fraction between 0 and 0.5, such as 0.06 for 6 %")
+    def _plausible(cls, value: Any) -> Any:
+        is_number = isinstance(value, (int, float)) and not isinstance(value, bool)
+        if value != "from_reference" and not (is_number and 0 < value < 0.5):
+            raise ValueError(
+                'it must be "from_reference", or a fraction between 0 and 0.5, such as 0.06 for 6 %'
+            )
         return value
 
 
@@ -164,7 +169,7 @@ class LossSettings(_Section):
     @classmethod
     def _known(cls, value: str) -> str:
         if value not in LOSS_GROUPS:
-            raise ValueError(f"must be one of {', '.join(LOSS_GROUPS)}")
+            raise ValueError(f"it must be one of {', '.join(LOSS_GROUPS)}")
         return value
 
 
@@ -182,7 +187,7 @@ class UncertaintySettings(_Section):
     @classmethod
     def _known(cls, value: str) -> str:
         if value not in UNCERTAINTY_GROUPS:
-            raise ValueError(f"must be one of {', '.join(UNCERTAINTY_GROUPS)}")
+            raise ValueError(f"it must be one of {', '.join(UNCERTAINTY_GROUPS)}")
         return value
 
 
@@ -259,7 +264,9 @@ def with_overrides(values: Mapping[str, Any], overrides: Mapping[str, Any]) -> d
     }
     for path, value in overrides.items():
         section, key = path.split(".")
-        merged.setdefault(section, {})[key] = value
+        table = merged.setdefault(section, {})
+        if isinstance(table, dict):  # anything else is refused when the values are validated
+            table[key] = value
     return merged
 
 
@@ -279,13 +286,26 @@ def _explain(fault: Any) -> str:
         f"[{part + 1}]" if isinstance(part, int) else str(part) for part in fault["loc"]
     ).replace(".[", "[")
     rule, kind = fault["msg"].removeprefix("Value error, "), fault["type"]
+    rule = rule.replace("Input should", "it must", 1)
     if kind == "missing":
         return f"{key}: not given; the key is required and never guessed; add a line for it"
     if kind == "extra_forbidden":
-        return f"{key}: unknown key; only keys of the template are read; mend or remove it"
-    if not key:
-        return rule
+        near = difflib.get_close_matches(str(fault["loc"][-1]), _keys_beside(fault["loc"]), n=1)
+        remedy = f"write {near[0]} if that is meant" if near else "mend or remove it"
+        return f"{key}: unknown key; only keys of the template are read; {remedy}"
     met = fault["input"]
+    if not key or (kind == "value_error" and isinstance(met, dict)):
+        return f"{key}: {rule}" if key else rule  # about a table as a whole; says what to do
     shown = json.dumps(met, default=str, ensure_ascii=False)
     shown = shown if len(shown) <= 80 else shown[:77] + "..."
     return f"{key}: is {shown}; {rule[0].lower() + rule[1:]}; write a value that keeps this rule"
+
+
+def _keys_beside(place: tuple[int | str, ...]) -> list[str]:
+    """The keys that the table of an unknown key may have."""
+    table: Any = Settings
+    for part in place[:-1]:
+        if isinstance(part, str):
+            table = table.model_fields[part].annotation
+            table = next(iter(get_args(table)), table)  # a list of tables: the table in it
+    return list(table.model_fields)

@@ -59,9 +59,24 @@ def make_study(folder: str | Path, *, demo: bool = False) -> Path:
             rule="a new study never overwrites anything",
             remedy="choose another folder, or remove this one first",
         )
-    target.parent.mkdir(parents=True, exist_ok=True)
     part = target.with_name(f"{target.name}.part")
-    shutil.rmtree(part, ignore_errors=True)
+    if part.exists():
+        raise StudyError.of(
+            met=f"'{part.name}' stands beside '{folder}', where the new study is put together",
+            rule="a new study never overwrites anything",
+            remedy="remove or rename it first; a run that was cut off may have left it",
+        )
+    try:
+        _lay_out(part, demo=demo)
+        if target.exists():
+            target.rmdir()
+        part.rename(target)
+    finally:
+        shutil.rmtree(part, ignore_errors=True)
+    return target
+
+
+def _lay_out(part: Path, *, demo: bool) -> None:
     (part / "workbooks").mkdir(parents=True)
     (part / "data").mkdir()
     if demo:
@@ -76,10 +91,6 @@ def make_study(folder: str | Path, *, demo: bool = False) -> Path:
         name = f"{step.workbook}.ipynb"
         text = (shipped_folder("workbooks") / name).read_text(encoding="utf-8")
         (part / "workbooks" / name).write_text(_point_at_study(text), encoding="utf-8")
-    if target.exists():
-        target.rmdir()
-    part.rename(target)
-    return target
 
 
 def _point_at_study(notebook_text: str) -> str:

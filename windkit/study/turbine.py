@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+import csv
+from pathlib import Path
+
 import numpy as np
-import pandas as pd
+from numpy.typing import NDArray
 
 from windkit.kernels.curve import PowerCurve, betz_check
 from windkit.study.errors import StudyError
@@ -36,37 +39,7 @@ def read_curve(study: Study) -> PowerCurve:
     """
     turbine = study.settings.turbine
     name = turbine.curve_file
-    file = study.path(name, key="turbine.curve_file")
-    try:
-        table = pd.read_csv(file, comment="#")
-    except (pd.errors.ParserError, pd.errors.EmptyDataError, UnicodeDecodeError) as error:
-        raise StudyError.of(
-            file=name,
-            met=f"it cannot be read as a table: {error}",
-            rule="a curve is comma-separated text with a header line",
-            remedy=f"write the columns {_SPEED} and {_POWER}",
-        ) from None
-    columns = []
-    for column in (_SPEED, _POWER):
-        if column not in table.columns:
-            raise StudyError.of(
-                file=name,
-                met=f"there is no column {column} among {', '.join(map(str, table.columns))}",
-                rule=f"a curve has the columns {_SPEED} and {_POWER}, separated by commas",
-                remedy="rename the columns or mend the separator",
-            )
-        numbers = pd.to_numeric(table[column], errors="coerce")
-        bad = numbers.index[numbers.isna()]
-        if len(bad):
-            raise StudyError.of(
-                file=name,
-                line=int(bad[0]) + 2,
-                met=f"{column} is '{table[column].iloc[bad[0]]}'",
-                rule="every value of a curve is a number",
-                remedy="mend that value",
-            )
-        columns.append(numbers.to_numpy(dtype=float))
-    speed, power = columns
+    speed, power = _columns(study.path(name, key="turbine.curve_file"), name)
     try:
         curve = PowerCurve(
             wind_speed=speed,
@@ -78,7 +51,8 @@ def read_curve(study: Study) -> PowerCurve:
         raise StudyError.of(
             file=name,
             met=str(error),
-            rule="a curve rises in speed and its power is never negative",
+            rule="a curve rises in speed to its cut-out (turbine.cut_out_m_s), and its power is "
+            "never negative",
             remedy="mend the file, or ask the maker for the certified table",
         ) from None
     highest = float(np.max(power))
@@ -100,3 +74,54 @@ def read_curve(study: Study) -> PowerCurve:
             remedy="if unit, rotor and density are right, the claim is not to be believed",
         ) from None
     return curve
+
+
+def _columns(file: Path, name: str) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """The two columns of a curve's file, every row as long as the header; ``#`` is a comment."""
+    try:
+        lines = file.read_text(encoding="utf-8-sig").splitlines()
+    except UnicodeDecodeError as error:
+        raise StudyError.of(
+            file=name,
+            met=f"byte {error.start} is not UTF-8 text",
+            rule="a curve is comma-separated text with a header line",
+            remedy="save it again as CSV in UTF-8",
+        ) from None
+    rows = [
+        (number, [field.strip() for field in next(csv.reader([text]))])
+        for number, text in ((at, line.split("#")[0].strip()) for at, line in enumerate(lines, 1))
+        if text
+    ]
+    header_line, header = rows[0] if rows else (1, ["nothing"])
+    for column in (_SPEED, _POWER):
+        if header.count(column) != 1:
+            raise StudyError.of(
+                file=name,
+                line=header_line,
+                met=f"{header.count(column) or 'no'} column {column} among {', '.join(header)}",
+                rule=f"a curve has {_SPEED} and {_POWER} once each, columns set apart by commas",
+                remedy="rename the columns or mend the separator",
+            )
+    places = [header.index(column) for column in (_SPEED, _POWER)]
+    values = np.empty((len(rows) - 1, 2))
+    for row, (number, fields) in enumerate(rows[1:]):
+        if len(fields) != len(header):
+            raise StudyError.of(
+                file=name,
+                line=number,
+                met=f"{len(fields)} fields where the header has {len(header)}",
+                rule="each row has one field a column, and decimals are written with a point",
+                remedy="mend that line",
+            )
+        for at, place in enumerate(places):
+            try:
+                values[row, at] = float(fields[place])
+            except ValueError:
+                raise StudyError.of(
+                    file=name,
+                    line=number,
+                    met=f"{header[place]} is '{fields[place]}'",
+                    rule="every value of a curve is a number",
+                    remedy="mend that value",
+                ) from None
+    return values[:, 0], values[:, 1]

@@ -191,3 +191,10 @@ def test_house_settings_can_be_taken_for_a_session():
     with mpl.rc_context():
         figures.use()
         assert mpl.rcParams["figure.dpi"] == look.DPI
+
+
+def test_a_figure_without_data_says_why_it_is_empty() -> None:
+    ratio = figures.pair_ratio_by_direction([], [])
+    turbulence = figures.turbulence_by_speed([], [], [])
+    assert ratio.texts[0].get_text() == "one sensor only at this height"
+    assert "no standard deviation" in turbulence.texts[0].get_text()

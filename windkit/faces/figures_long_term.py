@@ -30,6 +30,7 @@ from windkit.faces.look import (
     legend_below,
     level_room,
     new_axes,
+    nothing_to_draw,
     number_text,
 )
 
@@ -126,6 +127,8 @@ def yearly_means(
     shown = np.asarray(years, dtype=float)
     ax = new_axes(ax, width=6.8, height=3.2)
     dress(ax, title=title, x="Year", y="Mean wind speed [m/s]")
+    if shown.size == 0:
+        return nothing_to_draw(ax, "no whole calendar year in the record")
     if campaign_years is not None:
         first, last = min(campaign_years), max(campaign_years)
         ax.axvspan(

@@ -30,6 +30,7 @@ from windkit.faces.look import (
     level_room,
     line_style,
     new_axes,
+    nothing_to_draw,
     percent_axis,
     recovery_colours,
 )
@@ -188,6 +189,8 @@ def turbulence_by_speed(
     """
     ax = new_axes(ax)
     dress(ax, title=title, x=_WIND_SPEED, y="Turbulence intensity")
+    if np.size(mean) == 0:
+        return nothing_to_draw(ax, "no standard deviation recorded beside the main speed")
     if representative is not None:
         ax.plot(
             speed_centres,
@@ -336,6 +339,8 @@ def pair_ratio_by_direction(
     values = np.asarray(ratio, dtype=float)
     ax = new_axes(ax, width=6.8)
     dress(ax, title=title, x=_DIRECTION, y=label)
+    if values.size == 0:
+        return nothing_to_draw(ax, "one sensor only at this height")
     ax.axhline(1.0, color=MUTED, linewidth=0.9)
     for position, (name, bearing) in enumerate((boom_bearings or {}).items()):
         shadow = (bearing + 180.0) % 360.0

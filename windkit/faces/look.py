@@ -46,6 +46,7 @@ __all__ = [
     "level_room",
     "line_style",
     "new_axes",
+    "nothing_to_draw",
     "number_text",
     "percent_axis",
     "recovery_colours",
@@ -143,8 +144,14 @@ def in_house_style(draw: _Drawing) -> _Drawing:
     def drawn(*args: Any, **kwargs: Any) -> Any:
         import matplotlib as mpl
 
-        with mpl.rc_context(SETTINGS):  # type: ignore[arg-type,unused-ignore]
+        # Not rc_context: a notebook's backend switches itself to interactive at the first figure,
+        # which that would undo, and every later figure would stay unseen.
+        before = {name: mpl.rcParams[name] for name in SETTINGS}
+        mpl.rcParams.update(SETTINGS)  # type: ignore[arg-type,unused-ignore]
+        try:
             return draw(*args, **kwargs)
+        finally:
+            mpl.rcParams.update(before)
 
     return drawn  # type: ignore[return-value]
 
@@ -177,6 +184,14 @@ def dress(ax: Axes, *, title: str = "", x: str = "", y: str = "", grid: str | No
         ax.set_xlabel(x)
     if y:
         ax.set_ylabel(y)
+    return ax
+
+
+def nothing_to_draw(ax: Axes, said: str) -> Axes:
+    """Say on an empty axes why it is empty, so that a chapter keeps its place for the figure."""
+    ax.set_xticks([])
+    ax.set_yticks([])
+    ax.text(0.5, 0.5, said, transform=ax.transAxes, ha="center", va="center", color=MUTED)
     return ax
 
 

@@ -86,6 +86,16 @@ TABLE_STYLE = f"""<style>
 
 Format = str | Callable[[Any], str]
 
+#: How a column's name says its unit, longest ending first.
+_UNIT_BY_ENDING: dict[str, str] = {
+    "_mwh_per_year": "MWh/year",
+    "_kg_m3": "kg/m³",
+    "_m_s": "m/s",
+    "_kw": "kW",
+    "_deg": "°",
+    "_m": "m",
+}
+
 
 class Table:
     """A table that shows itself in a workbook and goes into the report as it is.
@@ -304,8 +314,12 @@ def _only_counts(index: pd.Index) -> bool:
 
 def _heading(column: Any) -> str:
     if isinstance(column, tuple):
-        return " ".join(str(part) for part in column if str(part))
-    return str(column)
+        return " ".join(_heading(part) for part in column if str(part))
+    name = str(column)
+    for ending, unit in _UNIT_BY_ENDING.items():
+        if name.endswith(ending):
+            return f"{name.removesuffix(ending).replace('_', ' ')} [{unit}]"
+    return name.replace("_", " ")
 
 
 def _is_missing(value: Any) -> bool:

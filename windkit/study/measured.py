@@ -34,11 +34,13 @@ EXPONENT_WITHOUT_PROFILE = 1 / 7
 LEAST_IN_TURBULENCE_BIN = 6
 #: Normal quantile of the representative turbulence: the 90 % value of IEC 61400-1.
 _REPRESENTATIVE_QUANTILE = 1.28
+#: Fewest days of values for a month to be drawn, our choice.
+LEAST_DAYS_OF_MONTH = 5
 #: Least speed for a ratio of two cups [m/s]: below it starting speeds matter. Common practice.
 _LEAST_SPEED_FOR_RATIO = 4.0
 _DIRECTION_BIN = 10.0
-_MINUTES_PER_HOUR = 60.0
-_MINUTES_PER_YEAR = 365.25 * 24 * 60
+_MINUTES_PER_DAY = 24 * 60
+_MINUTES_PER_YEAR = 365.25 * _MINUTES_PER_DAY
 
 
 @dataclass(frozen=True)
@@ -206,7 +208,7 @@ def examine_record(study: Study, record: Record) -> Measured:
         frequency=frequency,
         weibull=weibull,
         diurnal=frame[names].groupby(hour.hour).mean(),
-        monthly=frame[names].groupby(index.month).mean(),
+        monthly=_monthly(frame[names], index, settings.interval_min),
         heights=heights,
         turbulence=turbulence,
         outcome=Outcome(
@@ -233,6 +235,13 @@ def _recovery(record: Record, settings: StationSettings) -> pd.DataFrame:
     means = [channel.name for channel in settings.channels if channel.statistic == "mean"]
     table = record.recovery[record.recovery["channel"].isin(means)]
     return table.pivot_table(index="month", columns="channel", values="after")[means]
+
+
+def _monthly(frame: pd.DataFrame, index: pd.DatetimeIndex, interval_min: float) -> pd.DataFrame:
+    """Mean by calendar month, where there are values for a few days of it at least."""
+    by_month = frame.groupby(index.month)
+    days = by_month.count() * interval_min / _MINUTES_PER_DAY
+    return by_month.mean().where(days >= LEAST_DAYS_OF_MONTH)
 
 
 def _rows_table(record: Record) -> pd.DataFrame:

@@ -146,12 +146,13 @@ def in_house_style(draw: _Drawing) -> _Drawing:
 
         # Not rc_context: a notebook's backend switches itself to interactive at the first figure,
         # which that would undo, and every later figure would stay unseen.
-        before = {name: mpl.rcParams[name] for name in SETTINGS}
-        mpl.rcParams.update(SETTINGS)  # type: ignore[arg-type,unused-ignore]
+        session: Any = mpl.rcParams
+        before = {name: session[name] for name in SETTINGS}
+        session.update(SETTINGS)
         try:
             return draw(*args, **kwargs)
         finally:
-            mpl.rcParams.update(before)
+            session.update(before)
 
     return drawn  # type: ignore[return-value]
 

@@ -15,6 +15,10 @@ from windkit.study.reading import Reading
 from windkit.study.record import build_record, replay
 
 
+#: The made-up values are white noise: what moves like no weather is not the subject here.
+FEW = CheckSettings(masking_rules=["range", "stuck"])
+
+
 def mast(count: int = 4464, *, seed: int = 5) -> Reading:
     """A month with a stuck vane, an absurd speed, missing temperatures and calms."""
     rng = np.random.default_rng(seed)
@@ -23,6 +27,7 @@ def mast(count: int = 4464, *, seed: int = 5) -> Reading:
     speed[700] = 468.0
     direction = np.round(rng.uniform(0, 359.9, count), 1)
     direction[1000:1100] = 123.0
+    speed[1000:1100] = np.maximum(speed[1000:1100], 3.0)  # below, a vane may rest
     temperature = np.round(rng.normal(280, 3, count), 1)
     temperature[2000:2050] = np.nan
     columns = {"speed_80": speed, "direction_78": direction, "temperature_5": temperature}
@@ -30,7 +35,7 @@ def mast(count: int = 4464, *, seed: int = 5) -> Reading:
 
 
 def test_every_value_is_counted_once():
-    record = build_record(mast())
+    record = build_record(mast(), FEW)
     counts = record.counts.set_index("channel")
     assert counts.loc["speed_80", "masked"] == 1
     assert counts.loc["direction_78", "masked"] == 100
@@ -41,7 +46,7 @@ def test_every_value_is_counted_once():
 
 
 def test_recovery_stands_before_and_after_by_month():
-    recovery = build_record(mast()).recovery.set_index("channel")
+    recovery = build_record(mast(), FEW).recovery.set_index("channel")
     assert recovery["month"].unique().tolist() == ["2026-01"]
     assert recovery.loc["temperature_5", "before"] == pytest.approx(4414 / 4464)
     assert recovery.loc["direction_78", "before"] == 1.0
@@ -70,13 +75,13 @@ def test_replaying_the_written_ledger_gives_the_same_record(tmp_path):
         who="E. Marsh",
         when="2026-02-03",
     )
-    record = build_record(reading, None, pd.concat([keep, drop], ignore_index=True))
+    record = build_record(reading, FEW, pd.concat([keep, drop], ignore_index=True))
     assert record.counts.set_index("channel")["masked"].tolist() == [11, 60, 10]
     write_ledger(record.ledger, tmp_path / "ledger.csv")
     again = read_ledger(tmp_path / "ledger.csv")
     pd.testing.assert_frame_equal(replay(reading, again), record.frame)
     # The whole ledger handed back finds its automatic rows anew and changes nothing.
-    pd.testing.assert_frame_equal(build_record(reading, None, again).ledger, record.ledger)
+    pd.testing.assert_frame_equal(build_record(reading, FEW, again).ledger, record.ledger)
 
 
 def test_a_check_that_does_not_mask_only_lists_suspects():
@@ -86,7 +91,7 @@ def test_a_check_that_does_not_mask_only_lists_suspects():
 
 
 def test_a_calm_has_no_direction_and_counts():
-    record = build_record(mast())
+    record = build_record(mast(), FEW)
     calm = record.raw["speed_80"] < 0.5
     assert record.frame.loc[calm, "direction_78"].isna().all()
     assert record.frame.loc[calm, "speed_80"].notna().all()
@@ -109,12 +114,12 @@ def test_nothing_left_of_the_main_speed_is_refused():
         when="2026-02-03",
     )
     with pytest.raises(StudyError, match="nothing is left of speed_80"):
-        build_record(reading, None, lost)
+        build_record(reading, FEW, lost)
 
 
 def test_hours_need_their_share_of_intervals():
-    hourly = build_record(mast()).hourly(0.8333)
-    record = build_record(mast())
+    hourly = build_record(mast(), FEW).hourly(0.8333)
+    record = build_record(mast(), FEW)
     assert hourly.index[0] == pd.Timestamp("2026-01-01", tz="UTC")
     assert len(hourly) == 744
     assert hourly["speed_80"].iloc[0] == pytest.approx((0.2 + 0.3 + 4 * 9.0) / 6)
@@ -128,7 +133,7 @@ def test_hours_need_their_share_of_intervals():
 def test_hourly_directions_agree_with_scipy():
     # scipy.stats.circmean is the outside reference for the mean of unit vectors.
     reading = mast()
-    record = build_record(reading)
+    record = build_record(reading, FEW)
     hourly = record.hourly(1 / 6)["direction_78"]
     frame = record.frame["direction_78"]
     for hour in (0, 1, 100, 700):
@@ -175,7 +180,7 @@ def test_hours_of_an_hourly_record_keep_their_values_even_off_the_hour():
         main_wind_direction=None,
     )
     reading = reading_of({"speed_80": np.array([1.0, 2.0])}, station, start="2026-01-01 00:51")
-    hourly = build_record(reading).hourly()
+    hourly = build_record(reading, FEW).hourly()
     assert hourly.index[0] == pd.Timestamp("2026-01-01 01:00", tz="UTC")
     assert hourly["speed_80"].tolist() == [1.0, 2.0]
 

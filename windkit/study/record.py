@@ -7,6 +7,7 @@ the ledger alone. Hourly means and recovery are taken here. The checks themselve
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -100,6 +101,9 @@ def build_record(
     reading: Reading,
     check_settings: CheckSettings | None = None,
     ledger: pd.DataFrame | None = None,
+    *,
+    references: Sequence[Reading] = (),
+    elevation: float = 0.0,
 ) -> Record:
     """Check a reading, add what persons decided, and mask.
 
@@ -112,6 +116,10 @@ def build_record(
     ledger : DataFrame, optional
         Rows of persons. Automatic rows in it are left out and found anew, so that a changed
         threshold takes effect.
+    references : sequence of Reading
+        Long records from near the site, for the checks of north and clock.
+    elevation : float
+        Of the ground above the sea [m], for the marks of pressure.
 
     Returns
     -------
@@ -124,7 +132,7 @@ def build_record(
         If the ledger names an unknown channel, or nothing is left of the main wind speed.
     """
     check_settings = check_settings or CheckSettings()
-    spans = run_checks(reading, check_settings)
+    spans = run_checks(reading, check_settings, references=references, elevation=elevation)
     decided = human_rows(ledger) if ledger is not None else empty_ledger()
     automatic = automatic_rows(spans, check_settings)
     parts = [part for part in (automatic, decided) if len(part)]

@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-__all__ = ["SPAN_COLUMNS", "joined", "no_spans", "runs", "spans_of"]
+__all__ = ["SPAN_COLUMNS", "instants", "joined", "no_spans", "one_span", "runs", "spans_of"]
 
 SPAN_COLUMNS = ("channel", "from", "to", "count", "measure", "threshold", "reason", "rule")
 
@@ -29,6 +29,11 @@ def joined(tables: list[pd.DataFrame]) -> pd.DataFrame:
     return whole.sort_values(["from", "channel", "rule", "to"], kind="stable", ignore_index=True)
 
 
+def instants(index: pd.DatetimeIndex) -> NDArray[np.datetime64]:
+    """An index with a zone as plain instants; without the type it would become objects."""
+    return index.to_numpy(dtype="datetime64[ns]")
+
+
 def runs(
     mask: NDArray[np.bool_], index: pd.DatetimeIndex, interval: pd.Timedelta
 ) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
@@ -36,7 +41,7 @@ def runs(
     if not mask.any():
         return np.empty(0, np.intp), np.empty(0, np.intp)
     at = np.flatnonzero(mask)
-    stamps = index.to_numpy()
+    stamps = instants(index)
     new = np.ones(len(at), dtype=bool)
     new[1:] = np.diff(stamps[at]) != interval.to_timedelta64()
     first = np.flatnonzero(new)
@@ -106,6 +111,39 @@ def spans_of(
             columns=list(SPAN_COLUMNS),
         )
     )
+
+
+def one_span(
+    start: int,
+    stop: int,
+    index: pd.DatetimeIndex,
+    interval: pd.Timedelta,
+    *,
+    channel: str,
+    rule: str,
+    reason: str,
+    threshold: float,
+    measure: float,
+    count: int,
+) -> pd.DataFrame:
+    """One span over positions `start` to `stop`, whatever outages it runs through.
+
+    For a lasting fault, such as a turned vane; `count` is the values it touches. The rest is as
+    in `spans_of`.
+    """
+    if stop <= start or count == 0:
+        return no_spans()
+    row = (
+        channel,
+        index[start],
+        index[stop - 1] + interval,
+        count,
+        measure,
+        threshold,
+        reason,
+        rule,
+    )
+    return _typed(pd.DataFrame([row], columns=list(SPAN_COLUMNS)))
 
 
 def _typed(table: pd.DataFrame) -> pd.DataFrame:

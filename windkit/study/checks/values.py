@@ -11,17 +11,21 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from windkit.study.checks.spans import joined, runs, spans_of
+from windkit.kernels.air import standard_atmosphere
+from windkit.study.checks.comparing import index_of, nearest_speed, values_of
+from windkit.study.checks.spans import instants, joined, runs, spans_of
 from windkit.study.checks.thresholds import CheckSettings
 from windkit.study.reading import Reading
 from windkit.study.stations import ChannelSettings
 
-__all__ = ["plausible_limits", "range_spans", "stuck_spans"]
+__all__ = ["plausible_limits", "range_mark_spans", "range_spans", "stuck_spans"]
 
 #: Averaging periods between which the highest plausible speed is interpolated [s].
 _GUST_SECONDS, _MEAN_SECONDS = 3.0, 600.0
-#: Humidity at which sensors saturate and may rightly stand still [1].
-_SATURATED = 0.99
+#: Humidity at which sensors, good to 3 %, saturate and may rightly stand still [1].
+_SATURATED = 0.97
+#: A vane may rest below this speed [m/s]; common practice.
+_SLACK_BELOW = 2.0
 #: Fewest runs of three equal values from which their continuation is estimated.
 _FEWEST_RUNS = 30
 
@@ -100,25 +104,91 @@ def range_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
     """
     tables = []
     for channel in reading.settings.channels:
-        values = reading.frame[channel.name].to_numpy()
-        lowest, highest = plausible_limits(channel, settings, reading.interval)
+        limits = plausible_limits(channel, settings, reading.interval)
+        words = f"{channel.quantity} ({channel.statistic}) {{side}} what it can be"
+        tables += _outside(reading, channel, limits, "range", words)
+    return joined(tables)
+
+
+def range_mark_spans(
+    reading: Reading, settings: CheckSettings, *, elevation: float = 0.0
+) -> pd.DataFrame:
+    """Values beyond the screening marks of measurement practice: rare, and worth a look.
+
+    Parameters
+    ----------
+    reading : Reading
+        The record as read.
+    settings : CheckSettings
+        Marks, for ten- to sixty-minute means.
+    elevation : float
+        Of the ground above the sea [m]; pressure marks are scaled with it.
+
+    Returns
+    -------
+    DataFrame
+        Spans of rule ``range_mark``; the measure is the value furthest from zero.
+
+    References
+    ----------
+    .. [1] Bailey et al. 1997, Wind Resource Assessment Handbook, NREL/SR-440-22223, range tests
+       (MEA-7).
+    """
+    tables = []
+    for channel in reading.settings.channels:
+        limits = _marks(channel, settings, elevation)
+        if limits is not None:
+            words = f"{channel.quantity} ({channel.statistic}) {{side}} its screening mark"
+            tables += _outside(reading, channel, limits, "range_mark", words)
+    return joined(tables)
+
+
+def _marks(
+    channel: ChannelSettings, settings: CheckSettings, elevation: float
+) -> tuple[float, float] | None:
+    # A recorded mean below the logger's offset cannot come from a turning cup.
+    floor = 0.0 if channel.is_recomputed else channel.applied_offset or 0.0
+    match channel.quantity, channel.statistic:
+        case (("wind_speed" | "wind_speed_of_gust"), "sd"):
+            return 0.0, settings.mark_speed_sd_m_s
+        case ("wind_speed_of_gust", _) | ("wind_speed", "max"):
+            return floor, settings.mark_gust_m_s
+        case "wind_speed", "mean":
+            return floor, settings.mark_mean_speed_m_s
+        case "wind_from_direction", "sd":
+            return settings.mark_direction_sd_low_deg, settings.mark_direction_sd_high_deg
+        case "air_pressure", "mean":
+            here = standard_atmosphere(elevation + channel.height_m)[1]
+            share = float(here / standard_atmosphere(0.0)[1])
+            return share * settings.mark_pressure_low_pa, share * settings.mark_pressure_high_pa
+    return None
+
+
+def _outside(
+    reading: Reading,
+    channel: ChannelSettings,
+    limits: tuple[float, float],
+    rule: str,
+    words: str,
+) -> list[pd.DataFrame]:
+    values = values_of(reading, channel)
+    lowest, highest = limits
+    return [
+        spans_of(
+            mask,
+            index_of(reading),
+            reading.interval,
+            channel=channel.name,
+            rule=rule,
+            reason=words.format(side=side),
+            threshold=limit,
+            measure=values,
+        )
         for mask, limit, side in (
             (values < lowest, lowest, "below"),
             (values > highest, highest, "above"),
-        ):
-            tables.append(
-                spans_of(
-                    mask,
-                    _index(reading),
-                    reading.interval,
-                    channel=channel.name,
-                    rule="range",
-                    reason=f"{channel.quantity} ({channel.statistic}) {side} what it can be",
-                    threshold=limit,
-                    measure=values,
-                )
-            )
-    return joined(tables)
+        )
+    ]
 
 
 def stuck_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
@@ -148,13 +218,13 @@ def stuck_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
     """
     tables = []
     for channel in reading.settings.channels:
-        values = reading.frame[channel.name].to_numpy()
-        equal = _same_as_before(values, _index(reading), reading.interval)
-        equal &= ~_may_rest(values, channel, reading.settings.calm_below_m_s)
+        values = values_of(reading, channel)
+        equal = _same_as_before(values, index_of(reading), reading.interval)
+        equal &= ~_may_rest(reading, values, channel)
         shortest = _shortest_run(equal, np.isfinite(values).sum(), reading.interval, settings)
         if shortest is None:
             continue
-        first, behind = runs(equal, _index(reading), reading.interval)
+        first, behind = runs(equal, index_of(reading), reading.interval)
         mask = np.zeros(len(values), dtype=bool)
         for start, stop in zip(first - 1, behind, strict=True):
             if stop - start >= shortest:
@@ -163,7 +233,7 @@ def stuck_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
         tables += [
             spans_of(
                 part,
-                _index(reading),
+                index_of(reading),
                 reading.interval,
                 channel=channel.name,
                 rule="stuck",
@@ -186,22 +256,25 @@ def _same_as_before(
 ) -> NDArray[np.bool_]:
     equal = np.zeros(len(values), dtype=bool)
     equal[1:] = (values[1:] == values[:-1]) & (
-        np.diff(index.to_numpy()) == interval.to_timedelta64()
+        np.diff(instants(index)) == interval.to_timedelta64()
     )
     return equal
 
 
 def _may_rest(
-    values: NDArray[np.float64], channel: ChannelSettings, calm_below: float
+    reading: Reading, values: NDArray[np.float64], channel: ChannelSettings
 ) -> NDArray[np.bool_]:
-    """Values that may rightly stand still: a cup's floor, no spread, saturated air."""
+    """Values that may rightly rest: a cup's floor, no spread, saturated air, a slack vane."""
+    if channel.is_direction:
+        cup = nearest_speed(reading.settings, channel.height_m)
+        return values_of(reading, cup) < _SLACK_BELOW
     if channel.quantity == "relative_humidity" and channel.statistic != "sd":
         return values >= _SATURATED
     if channel.statistic == "sd":
         return values == 0.0
     if channel.quantity in {"wind_speed", "wind_speed_of_gust"}:
         floor = np.nanmin(values) if np.isfinite(values).any() else 0.0
-        return (values < calm_below) | (values == floor)
+        return (values < reading.settings.calm_below_m_s) | (values == floor)
     return np.zeros(len(values), dtype=bool)
 
 
@@ -221,8 +294,3 @@ def _shortest_run(
     chance = 1 + math.log(settings.stuck_false_alarms / count) / math.log(share)
     least = settings.shortest_stuck_min / (interval.total_seconds() / 60.0)
     return max(3, math.ceil(least), math.ceil(chance))
-
-
-def _index(reading: Reading) -> pd.DatetimeIndex:
-    assert isinstance(reading.frame.index, pd.DatetimeIndex)
-    return reading.frame.index

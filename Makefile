@@ -7,7 +7,7 @@ STUDY  ?= demo_study
 # Compiled once here: otherwise every kernel start would compile the libraries anew.
 INSTALL := $(BIN)/uv pip install --quiet --python $(BIN)/python --compile-bytecode
 
-.PHONY: study test lint format bench calibrate demo-data clean help
+.PHONY: study test lint format demo-data clean help
 
 help: ## list the targets
 	@grep -E '^[a-z-]+:.*##' $(MAKEFILE_LIST) | sed 's/:.*##/\t/'

@@ -167,7 +167,8 @@ def test_absurd_speed_is_caught_and_listed(study: Path) -> None:
 
 
 def test_every_row_is_kept_or_set_aside(study: Path) -> None:
-    rows = pd.read_parquet(study / "results" / "measure" / "rows.parquet").set_index("rows")["count"]
+    table = pd.read_parquet(study / "results" / "measure" / "rows.parquet")
+    rows = table.set_index("rows")["count"]
     lines = (study / "data" / "site.csv").read_text().count("\n") - 1  # less the header
     assert rows["read from the files"] == lines
     aside = rows[rows.index.str.startswith("set aside")].sum()

@@ -47,7 +47,9 @@ def test_imports_point_down(file: Path) -> None:
     if own is None:
         return
     upward = [
-        name for name in imported_modules(file) if (floor := floor_of(name)) is not None and floor > own
+        name
+        for name in imported_modules(file)
+        if (floor := floor_of(name)) is not None and floor > own
     ]
     assert not upward, f"{file.name} is on floor '{FLOORS[own]}' and imports from above: {upward}"
 
@@ -58,9 +60,7 @@ def test_the_import_test_can_fail(tmp_path: Path) -> None:
     assert [n for n in imported_modules(file) if floor_of(n) == FLOORS.index("faces")]
 
 
-@pytest.mark.parametrize(
-    "file", sorted((PACKAGE / "kernels").glob("*.py")), ids=lambda f: f.name
-)
+@pytest.mark.parametrize("file", sorted((PACKAGE / "kernels").glob("*.py")), ids=lambda f: f.name)
 def test_kernels_know_numpy_and_scipy_only(file: Path) -> None:
     allowed = {"numpy", "scipy", "windkit", "__future__", *sys.stdlib_module_names}
     heavy = {"pathlib", "os", "io", "csv", "json", "sqlite3", "shutil", "tempfile"}
@@ -156,7 +156,10 @@ def test_environment_yml_agrees_with_pyproject() -> None:
     wanted = {re.sub(r"\s", "", line) for line in project["dependencies"]}
     wanted.add(f"python{project['requires-python']}")
     lines = (ROOT / "environment.yml").read_text().splitlines()
-    listed = {line.strip()[2:] for line in lines if line.startswith("  - ")} - {"conda-forge", "pip"}
+    listed = {line.strip()[2:] for line in lines if line.startswith("  - ")} - {
+        "conda-forge",
+        "pip",
+    }
     assert listed == wanted
 
 

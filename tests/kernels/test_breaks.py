@@ -1,4 +1,4 @@
-"""Checks of windkit.kernels.breaks and homogeneity: printed values, other packages, seeded breaks."""
+"""Checks of breaks and homogeneity: printed values, other packages, seeded breaks."""
 
 import numpy as np
 import pytest

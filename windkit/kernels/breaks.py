@@ -216,18 +216,13 @@ def critical_value(
         raise ValueError(f"statistic must be one of {sorted(STATISTICS)}, got {statistic!r}")
     phi = min(max(autocorrelation, 0.0), 0.95) / LAG_STEP
     low = int(phi)
-    log_count = np.log(np.clip(count, LENGTHS[0], LENGTHS[-1]))
-    at = [
-        float(
-            np.interp(
-                log_count,
-                np.log(LENGTHS),
-                _scaled(statistic, np.array(LENGTHS))
-                * [_simulated(statistic, n, (low + k) * LAG_STEP, level, seed) for n in LENGTHS],
-            )
-        )
-        for k in (0, 1)
-    ]
+    log_count = float(np.log(np.clip(count, LENGTHS[0], LENGTHS[-1])))
+    right = int(np.clip(np.searchsorted(np.log(LENGTHS), log_count), 1, len(LENGTHS) - 1))
+    pair = np.array(LENGTHS[right - 1 : right + 1])
+    at = []
+    for lag in (low, low + 1):
+        simulated = [_simulated(statistic, n, lag * LAG_STEP, level, seed) for n in pair.tolist()]
+        at.append(float(np.interp(log_count, np.log(pair), _scaled(statistic, pair) * simulated)))
     value = at[0] + (phi - low) * (at[1] - at[0])
     return float(value / _scaled(statistic, np.exp(log_count)) * _beyond(statistic, count))
 

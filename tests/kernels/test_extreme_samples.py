@@ -55,7 +55,7 @@ def test_storms_are_those_of_a_plain_loop(values, separation):
     ("call", "message"),
     [
         (lambda: block_maxima([1.0, 2.0], [2001]), "series of one length"),
-        (lambda: block_maxima([1.0], [2001.0]), "block must hold whole numbers"),
+        (lambda: block_maxima([1.0], [2001.0]), "blocks must hold whole numbers"),
         (lambda: block_maxima([1.0], [2001], least_known=90.0), "least_known must be above 0"),
         (lambda: storm_maxima([[1.0]], threshold=1.0, separation=1), "must be one series"),
         (lambda: storm_maxima([1.0], threshold=1.0, separation=0), "at least 1 step, got 0"),

@@ -15,7 +15,7 @@ __all__ = ["block_maxima", "storm_maxima"]
 
 
 def block_maxima(
-    wind_speed: ArrayLike, block: ArrayLike, *, least_known: float = 0.9
+    wind_speed: ArrayLike, blocks: ArrayLike, *, least_known: float = 0.9
 ) -> tuple[NDArray[np.int64], NDArray[np.float64], NDArray[np.float64]]:
     """Highest value in each block, such as each year.
 
@@ -23,14 +23,14 @@ def block_maxima(
     ----------
     wind_speed : array_like
         Wind speeds [m/s] or gusts, NaN where missing, one dimension.
-    block : array_like of int
+    blocks : array_like of int
         Block each record belongs to, such as its year.
     least_known : float
         Share of a block's records [1] that must be known; a storm may hide in the rest.
 
     Returns
     -------
-    block : ndarray of int
+    labels : ndarray of int
         Blocks, ascending.
     maximum : ndarray
         Highest value of each [m/s]; NaN where too little is known.
@@ -43,15 +43,15 @@ def block_maxima(
     ValueError
         If lengths differ, blocks are not whole numbers, or the share is out of range.
     """
-    v, label = floats(wind_speed), np.asarray(block)
+    v, label = floats(wind_speed), np.asarray(blocks)
     if v.ndim != 1 or label.shape != v.shape or v.size == 0:
         raise ValueError(
-            f"wind_speed and block must be series of one length, got {v.shape} and {label.shape}; "
+            f"wind_speed and blocks must be series of one length, got {v.shape} and {label.shape}; "
             f"take both from one table"
         )
     if not np.issubdtype(label.dtype, np.integer):
         raise ValueError(
-            f"block must hold whole numbers, got {label.dtype}; give years as integers"
+            f"blocks must hold whole numbers, got {label.dtype}; give years as integers"
         )
     if not 0.0 < least_known <= 1.0:
         raise ValueError(

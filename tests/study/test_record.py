@@ -14,7 +14,6 @@ from windkit.study.ledger import decision_row, read_ledger, write_ledger
 from windkit.study.reading import Reading
 from windkit.study.record import build_record, replay
 
-
 #: The made-up values are white noise: what moves like no weather is not the subject here.
 FEW = CheckSettings(masking_rules=["range", "stuck"])
 

@@ -149,7 +149,7 @@ def mast_shadows(reading: Reading, settings: CheckSettings) -> list[Shadow]:
         noise = np.maximum(settings.shadow_deficit, 4.0 * np.nan_to_num(error))
         for cup, partner, deep in (
             (one, other, -departure),
-            (other, one, departure),
+            (other, one, 1.0 - 1.0 / (1.0 + departure)),
         ):
             for start, count in _sectors(deep > noise):
                 if not 2 <= count <= _WIDEST / _BIN:

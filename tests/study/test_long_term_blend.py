@@ -116,6 +116,14 @@ def test_result_has_every_part_of_the_answer(study, corrected):
     assert "doing nothing" in corrected.methods.index
 
 
+def test_more_months_are_worth_something():
+    # Common practice: a short campaign gains most from going on.
+    simulated = simulate_site(11, campaign_days=120, breaks_per_decade=0, drift_per_decade=0)
+    table = windkit.correct_long_term(*as_frames(simulated)).longer_campaign
+    assert table["months"].tolist() == [0, 3, 6, 12]
+    assert table["half_width_80"].iloc[-1] < 0.8 * table["half_width_80"].iloc[0]
+
+
 def test_gaps_and_a_reference_without_the_campaign(study, corrected):
     site, references = study
     rng = np.random.default_rng(0)

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from windkit.kernels.blend import fill_gaps
 from windkit.study.errors import StudyError
 
-__all__ = ["Inputs", "prepare_inputs"]
+__all__ = ["LEAST_LENGTH_RATIO", "Inputs", "prepare_inputs"]
 
 Array = NDArray[np.float64]
 

@@ -73,6 +73,7 @@ class LongTermCorrection:
     blend: Blend
     _methods: Callable[[], pd.DataFrame] = field(repr=False)
     _series: Callable[[str, float], pd.DataFrame] = field(repr=False)
+    _longer: Callable[[], pd.DataFrame] = field(repr=False)
 
     @property
     def standard_uncertainty(self) -> float:
@@ -100,6 +101,19 @@ class LongTermCorrection:
     def methods(self) -> pd.DataFrame:
         """Every method on trial by blocked hold-out, best first, and doing nothing."""
         return self._methods()
+
+    @cached_property
+    def longer_campaign(self) -> pd.DataFrame:
+        """What more months would bring, as the stand-ins show it.
+
+        Columns months [1] added, stand_in_rms [1] of the blend after a campaign that long, and
+        half_width_80 [1]: the present interval's, in the same proportion.
+        """
+        table = self._longer()
+        low, high = self.interval(0.8)
+        now = (high - low) / 2 / self.mean_speed
+        table["half_width_80"] = now * table["stand_in_rms"] / table["stand_in_rms"].iloc[0]
+        return table
 
     @cached_property
     def series(self) -> pd.DataFrame:

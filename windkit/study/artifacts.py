@@ -212,10 +212,11 @@ def _read(study: Study, step: Step) -> dict[str, Any]:
             remedy=f"run {step.workbook} first, or `sitestudy run {study.folder.name}`",
         )
     try:
-        content: dict[str, Any] = json.loads(file.read_text(encoding="utf-8"))
+        content = json.loads(file.read_text(encoding="utf-8"))
     except ValueError:
-        content = {}
-    if not content.keys() >= {"overrides", "made_from", "rows", "said", "warnings", "tables"}:
+        content = None
+    parts = {"overrides", "made_from", "rows", "said", "warnings", "tables"}
+    if not (isinstance(content, dict) and content.keys() >= parts):
         raise StudyError.of(
             file=f"results/{step.name}/{_ARTIFACT_FILE}",
             met="its content is not what the step wrote",

@@ -316,7 +316,7 @@ def moist_air_density(
 
 
 def density_speed_factor(
-    air_density: ArrayLike, *, reference_density: float = STANDARD_AIR_DENSITY
+    air_density: ArrayLike, *, reference_air_density: float = STANDARD_AIR_DENSITY
 ) -> NDArray[np.float64]:
     """Factor that brings wind speed at one density to equal power at a reference density.
 
@@ -324,7 +324,7 @@ def density_speed_factor(
     ----------
     air_density : array_like
         Air density at hub height [kg/m3].
-    reference_density : float
+    reference_air_density : float
         Density that a power curve is stated for [kg/m3].
 
     Returns
@@ -342,7 +342,7 @@ def density_speed_factor(
     .. [1] IEC 61400-12-1, data normalisation, turbines with active power control.
     """
     rho = refuse_not_positive("air_density", air_density, "kg/m3", "mask such values")
-    rho0 = refuse_not_positive("reference_density", reference_density, "kg/m3", "see the curve")
+    rho0 = refuse_not_positive("reference_air_density", reference_air_density, "kg/m3", "see the curve")
     return (rho / rho0) ** (1.0 / 3.0)
 
 

@@ -22,6 +22,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy.special import gamma, gammainc
 
+from windkit.kernels.air import density_speed_factor
 from windkit.kernels.constants import STANDARD_AIR_DENSITY
 from windkit.kernels.energy import HOURS_PER_YEAR
 from windkit.kernels.stream import BETZ_LIMIT, stream_power
@@ -166,11 +167,8 @@ def density_normalised_speed(
     ----------
     .. [1] IEC 61400-12-1, normalisation of active power control machines.
     """
-    speed = np.asarray(wind_speed, dtype=float)
-    density = np.asarray(air_density, dtype=float)
-    if np.any(density <= 0):
-        raise ValueError(f"air_density must be positive [kg/m3], got {np.nanmin(density):g}")
-    return (speed * (density / reference_air_density) ** (1 / 3))[()]
+    factor = density_speed_factor(air_density, reference_air_density=reference_air_density)
+    return (np.asarray(wind_speed, dtype=float) * factor)[()]
 
 
 def power_at(

@@ -1,7 +1,8 @@
 """From a station's files to columns in the library's units on starts of intervals in UTC.
 
 Here a station's declared files are read, each column is converted once, and every row is kept
-or listed as set aside. Text files are opened in `text_files`, the clock is in `stamps`. Nothing
+or listed as set aside. Files are opened in `text_files` and `table_files`, the clock is in
+`stamps`. Nothing
 is judged or masked: that is for the checks and the ledger.
 """
 
@@ -14,16 +15,16 @@ from pathlib import Path
 
 import numpy as np
 import pandas as pd
-import pyarrow as pa
-import pyarrow.parquet as pq
 from numpy.typing import NDArray
 
+from windkit.kernels.circular import wind_from_components
 from windkit.kernels.units import to_si
 from windkit.study.errors import StudyError
 from windkit.study.paths import file_in_study
 from windkit.study.stamps import interval_of, on_the_clock, read_stamps, to_starts
 from windkit.study.stations import ChannelSettings, SensorPeriod, StationSettings
-from windkit.study.text_files import RawTable, listed, missing_column, missing_numbers, read_text
+from windkit.study.table_files import read_netcdf, read_parquet, read_sheet
+from windkit.study.text_files import RawTable, listed, read_text
 from windkit.study.text_source import refuse_too_large
 
 __all__ = ["Reading", "read_station"]
@@ -31,6 +32,10 @@ __all__ = ["Reading", "read_station"]
 #: Recorded bearings outside this range are no bearings; they are left for the range check to
 #: list instead of being wrapped into a plausible one [deg].
 _BEARINGS = (-180.0, 360.0)
+
+
+#: Endings of formats that are not text.
+_OWN_FORMAT = {".parquet", ".pq", ".xlsx", ".xlsm", ".nc", ".nc4", ".cdf"}
 
 
 @dataclass(frozen=True)
@@ -93,7 +98,7 @@ def read_station(settings: StationSettings, folder: Path) -> Reading:
     """
     paths = {written: file_in_study(folder, written, key="files") for written in settings.files}
     for written, path in paths.items():
-        if not _is_parquet(path):
+        if path.suffix.lower() not in _OWN_FORMAT:
             refuse_too_large(path, written)  # before time is spent on its hash
     with ThreadPoolExecutor(max_workers=1) as beside:
         hashes = {written: beside.submit(_sha256, path) for written, path in paths.items()}
@@ -115,7 +120,7 @@ def read_station(settings: StationSettings, folder: Path) -> Reading:
     frame = pd.DataFrame(
         {
             channel.name: _converted(
-                _joined(tables, channel.column, None if in_order else kept),
+                [_joined(tables, name, None if in_order else kept) for name in channel.columns],
                 local[kept],
                 channel,
                 settings,
@@ -149,10 +154,6 @@ def _sha256(path: Path) -> str:
         return hashlib.file_digest(stream, "sha256").hexdigest()
 
 
-def _is_parquet(path: Path) -> bool:
-    return path.suffix.lower() in {".parquet", ".pq"}
-
-
 def _read_table(path: Path, written: str, settings: StationSettings) -> RawTable:
     if path.stat().st_size == 0:
         raise StudyError.of(
@@ -161,60 +162,14 @@ def _read_table(path: Path, written: str, settings: StationSettings) -> RawTable
             rule="a file has a header line and rows",
             remedy="ask for the file again, or take it out of files",
         )
-    if _is_parquet(path):
-        return _read_parquet(path, written, settings)
+    match path.suffix.lower():
+        case ".parquet" | ".pq":
+            return read_parquet(path, written, settings)
+        case ".xlsx" | ".xlsm":
+            return read_sheet(path, written, settings)
+        case ".nc" | ".nc4" | ".cdf":
+            return read_netcdf(path, written, settings)
     return read_text(path, written, settings)
-
-
-def _read_parquet(path: Path, written: str, settings: StationSettings) -> RawTable:
-    wanted = [settings.time_column, *(channel.column for channel in settings.channels)]
-    try:
-        names = pq.read_schema(path).names
-        for name in wanted:
-            if name not in names:
-                raise missing_column(written, name, names, None)
-        table = pq.read_table(path, columns=wanted)
-    except (pa.ArrowException, OSError) as error:
-        raise StudyError.of(
-            file=written,
-            met=f"the file cannot be read as Parquet ({str(error).splitlines()[0]})",
-            rule="a file is what its ending says",
-            remedy="ask for the file again, or correct its ending",
-        ) from error
-    stamps = table[settings.time_column].combine_chunks()
-    if not (pa.types.is_timestamp(stamps.type) or pa.types.is_string(stamps.type)):
-        if not pa.types.is_large_string(stamps.type):
-            raise StudyError.of(
-                file=written,
-                met=f"the column '{settings.time_column}' has the type {stamps.type}",
-                rule="stamps are timestamps or texts",
-                remedy="store the file again with a timestamp column",
-            )
-        stamps = stamps.cast(pa.string())
-    columns = {}
-    for name in wanted[1:]:
-        kind = table[name].type
-        if not (pa.types.is_integer(kind) or pa.types.is_floating(kind) or pa.types.is_null(kind)):
-            raise StudyError.of(
-                file=written,
-                met=f"the column '{name}' has the type {kind}",
-                rule="declared columns hold numbers",
-                remedy="store the file again with that column as numbers",
-            )
-        values = np.array(table[name].cast(pa.float64()).to_numpy(), dtype=np.float64)
-        for number in missing_numbers(settings):
-            values[values == number] = np.nan
-        infinite = np.flatnonzero(np.isinf(values))
-        if len(infinite):
-            raise StudyError.of(
-                file=written,
-                met=f"'{name}' is infinite in {len(infinite)} rows, first in row {infinite[0] + 1}",
-                rule="values are finite numbers or missing",
-                remedy="ask for the file again",
-            )
-        columns[name] = values
-    rows = np.arange(1, len(table) + 1, dtype=np.int64)
-    return RawTable(written, stamps, columns, lambda: rows, unit_of_rows="row")
 
 
 def _joined(
@@ -226,13 +181,17 @@ def _joined(
 
 
 def _converted(
-    recorded: NDArray[np.float64],
+    columns: list[NDArray[np.float64]],
     local: NDArray[np.datetime64],
     channel: ChannelSettings,
     settings: StationSettings,
 ) -> NDArray[np.float64]:
     """Values in the library's unit: calibration first, in the column's unit, then the unit."""
-    values = _recalibrated(recorded, local, channel, settings)
+    if channel.has_components:
+        east, north = (to_si(each, channel.unit, "eastward_wind") for each in columns)
+        speed, direction = wind_from_components(east, north)
+        return _true_bearing(direction, settings) if channel.is_direction else speed
+    values = _recalibrated(columns[0], local, channel, settings)
     zero, one = to_si([0.0, 1.0], channel.unit, channel.quantity)
     if channel.statistic == "sd":
         return values * (one - zero)  # a spread has no offset
@@ -240,6 +199,10 @@ def _converted(
         values = to_si(values, channel.unit, channel.quantity)
     if not channel.is_direction:
         return values
+    return _true_bearing(values, settings)
+
+
+def _true_bearing(values: NDArray[np.float64], settings: StationSettings) -> NDArray[np.float64]:
     with np.errstate(invalid="ignore"):
         bearing = (values >= _BEARINGS[0]) & (values <= _BEARINGS[1])
     declination = settings.declination_deg or 0.0
@@ -298,7 +261,7 @@ def _refuse_empty_channels(frame: pd.DataFrame, settings: StationSettings) -> No
         if np.isnan(frame[channel.name].iloc[0]) and frame[channel.name].isna().all()
     ]
     if empty:
-        columns = [f"'{settings.channel(name).column}' ({name})" for name in empty]
+        columns = [f"'{' and '.join(settings.channel(name).columns)}' ({name})" for name in empty]
         raise StudyError.of(
             file=", ".join(settings.files),
             met=f"there is not one value in {listed(columns)}",

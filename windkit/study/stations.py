@@ -103,7 +103,9 @@ class ChannelSettings(_Calibration):
     """One column of a station's files."""
 
     name: str = Field(pattern=r"^[A-Za-z][A-Za-z0-9_]*$", max_length=60)
-    column: str = Field(min_length=1)
+    column: str = Field(default="", description="header of the column")
+    eastward_column: str = Field(default="", description="instead: both components of the wind")
+    northward_column: str = ""
     quantity: Quantity
     statistic: Statistic = "mean"
     height_m: float = Field(ge=0, le=400)
@@ -122,7 +124,9 @@ class ChannelSettings(_Calibration):
 
     @model_validator(mode="after")
     def _hangs_together(self) -> ChannelSettings:
-        to_si([0.0], self.unit, self.quantity)  # its message lists the accepted units
+        self._check_columns()
+        # Its message lists the accepted units; components of a direction are speeds.
+        to_si([0.0], self.unit, "eastward_wind" if self.has_components else self.quantity)
         if self.lowest is not None and self.highest is not None and self.lowest >= self.highest:
             raise ValueError(f"lowest {self.lowest:g} is not below highest {self.highest:g}")
         if self.sensors and self.applied_slope is not None:
@@ -133,6 +137,32 @@ class ChannelSettings(_Calibration):
         if self.is_direction and self.certificate_slope is not None:
             raise ValueError("a direction has no certificate slope; correct north by its offset")
         return self
+
+    def _check_columns(self) -> None:
+        if bool(self.eastward_column) != bool(self.northward_column):
+            raise ValueError("eastward_column and northward_column belong together")
+        if bool(self.column) == self.has_components:
+            raise ValueError(
+                "write either column, or eastward_column and northward_column for a wind that "
+                "comes in components"
+            )
+        if self.has_components:
+            if self.quantity not in {"wind_speed", DIRECTION} or self.statistic != "mean":
+                raise ValueError("components give a mean wind_speed or a mean wind_from_direction")
+            if self.applied_slope is not None or self.sensors:
+                raise ValueError("components have no cup calibration")
+
+    @property
+    def has_components(self) -> bool:
+        """Whether the channel comes from an eastward and a northward column."""
+        return bool(self.eastward_column)
+
+    @property
+    def columns(self) -> tuple[str, ...]:
+        """Headers the channel is read from."""
+        if self.has_components:
+            return (self.eastward_column, self.northward_column)
+        return (self.column,)
 
     @property
     def is_direction(self) -> bool:
@@ -150,6 +180,7 @@ class StationSettings(_Section):
 
     name: str = Field(min_length=1)
     files: list[str] = Field(min_length=1)
+    sheet: str | None = Field(default=None, description="of a workbook; the first if left out")
     encoding: str = "utf-8"
     delimiter: str = Field(default=",", min_length=1, max_length=10)
     decimal: Literal[".", ","] = "."
@@ -187,8 +218,8 @@ class StationSettings(_Section):
     @model_validator(mode="after")
     def _hangs_together(self) -> StationSettings:
         _refuse_repeats([channel.name for channel in self.channels], "name")
-        _refuse_repeats([channel.column for channel in self.channels], "column")
-        if self.time_column in {channel.column for channel in self.channels}:
+        _refuse_repeats([channel.column for channel in self.channels if channel.column], "column")
+        if self.time_column in self.columns:
             raise ValueError(f"column '{self.time_column}' is both the time and a channel")
         if self.decimal == self.delimiter:
             raise ValueError("decimal and delimiter are both ','; they must differ")
@@ -217,6 +248,11 @@ class StationSettings(_Section):
                 f"{key} is '{name}', but the channels with a mean {quantity} are "
                 f"{', '.join(names) or 'none'}"
             )
+
+    @property
+    def columns(self) -> list[str]:
+        """Headers of all channels, each once, in their order."""
+        return list(dict.fromkeys(name for each in self.channels for name in each.columns))
 
     def channel(self, name: str) -> ChannelSettings:
         """The channel of that name."""

@@ -23,7 +23,7 @@ from windkit.study.errors import StudyError
 from windkit.study.stations import StationSettings
 from windkit.study.text_source import TextSource, open_text, split_fields
 
-__all__ = ["RawTable", "listed", "missing_column", "missing_numbers", "read_text"]
+__all__ = ["RawTable", "listed", "missing_column", "missing_numbers", "number_in", "read_text"]
 
 #: How many faults a message lists before it only counts them.
 _LISTED = 5
@@ -79,7 +79,7 @@ def read_text(path: Path, written: str, settings: StationSettings) -> RawTable:
     """
     source = open_text(path, written, settings)
     names = split_fields(source.header, settings)
-    wanted = [settings.time_column, *(channel.column for channel in settings.channels)]
+    wanted = [settings.time_column, *settings.columns]
     _check_columns(source, names, wanted, settings)
     positions = [names.index(name) for name in wanted]
     frame = _read_fast(source, len(names), positions, settings)
@@ -258,7 +258,7 @@ def _numbers(
         for row, fields in enumerate(rows):
             if fields[at] in none:
                 continue
-            value = _number(fields[at], settings.decimal)
+            value = number_in(fields[at], settings.decimal)
             if value is None:
                 faults.append((lines[row], name, fields[at]))
             elif value not in numbers:
@@ -281,7 +281,7 @@ def _numbers(
     return columns
 
 
-def _number(text: str, decimal: str) -> float | None:
+def number_in(text: str, decimal: str) -> float | None:
     """A finite number, written with that decimal sign and nothing else around it."""
     if decimal == ",":
         if "." in text:

@@ -114,6 +114,10 @@ def test_result_has_every_part_of_the_answer(study, corrected):
     assert corrected.windows["mean_speed"].iloc[-1] == pytest.approx(corrected.mean_speed)
     assert corrected.series["wind_speed"].mean() == pytest.approx(corrected.mean_speed)
     assert "doing nothing" in corrected.methods.index
+    by_reference = corrected.methods_by_reference
+    assert by_reference.index.get_level_values("reference").nunique() == 3
+    best = by_reference.loc[corrected.references.index[0]]
+    pd.testing.assert_frame_equal(best, corrected.methods)
 
 
 def test_more_months_are_worth_something():

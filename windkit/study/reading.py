@@ -68,6 +68,17 @@ class Reading:
         """Length of the averaging interval."""
         return interval_of(self.settings)
 
+    @property
+    def absent(self) -> pd.DataFrame:
+        """Intervals that stand in no file, as spans ``from``, ``to`` (the end), ``count``."""
+        starts = self.frame.index.to_series()
+        steps = starts.diff()
+        after = starts[steps > self.interval]
+        before = starts.shift(1)[steps > self.interval] + self.interval
+        count = ((after - before) / self.interval).round().astype(int)
+        columns = {"from": before, "to": after, "count": count}
+        return pd.DataFrame(columns).reset_index(drop=True)
+
 
 def read_station(settings: StationSettings, folder: Path) -> Reading:
     """Read a station's files, convert them once and account for every row.

@@ -9,7 +9,9 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 
+import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from windkit.study.checks import CheckSettings, run_checks
 from windkit.study.errors import StudyError
@@ -191,21 +193,32 @@ def replay(reading: Reading, ledger: pd.DataFrame) -> pd.DataFrame:
 
 def _recovery(reading: Reading, masked: pd.DataFrame) -> pd.DataFrame:
     """Shares of expected intervals by channel and calendar month (UTC)."""
-    first, last = reading.frame.index[0], reading.frame.index[-1]
-    grid = pd.date_range(first, last, freq=reading.interval)
-    expected = pd.Series(1, index=grid.strftime("%Y-%m")).groupby(level=0).sum()
-    month = reading.frame.index.strftime("%Y-%m")  # type: ignore[attr-defined]
-    before = reading.frame.notna().groupby(month).sum().reindex(expected.index, fill_value=0)
-    after = masked.notna().groupby(month).sum().reindex(expected.index, fill_value=0)
+    index = reading.frame.index
+    assert isinstance(index, pd.DatetimeIndex)
+    grid = pd.date_range(index[0], index[-1], freq=reading.interval)
+    start = index[0].year * 12 + index[0].month - 1
+
+    def months(stamps: pd.DatetimeIndex) -> NDArray[np.int64]:
+        return np.asarray(stamps.year * 12 + stamps.month - 1 - start, dtype=np.int64)
+
+    expected = np.bincount(months(grid))
+    at = months(index)
+
+    def share(values: pd.Series) -> NDArray[np.float64]:
+        known = np.isfinite(values.to_numpy())
+        counts = np.bincount(at[known], minlength=len(expected))
+        return np.divide(counts, expected, out=np.zeros(len(expected)), where=expected > 0)
+
+    labels = [f"{(start + n) // 12:04d}-{(start + n) % 12 + 1:02d}" for n in range(len(expected))]
     tables = [
         pd.DataFrame(
             {
                 "channel": channel.name,
                 "height": channel.height_m,
-                "month": expected.index,
-                "expected": expected.to_numpy(),
-                "before": (before[channel.name] / expected).to_numpy(),
-                "after": (after[channel.name] / expected).to_numpy(),
+                "month": labels,
+                "expected": expected,
+                "before": share(reading.frame[channel.name]),
+                "after": share(masked[channel.name]),
             }
         )
         for channel in reading.settings.channels

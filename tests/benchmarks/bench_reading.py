@@ -160,7 +160,8 @@ def bench(years: float, times: int) -> tuple[float, float, float]:
     print(f"  pandas.read_csv   {parsed:8.3f} s")
     print(f"  read_station      {read:8.3f} s   {read / parsed:.2f} times (mark {READING_MARK})")
     print(
-        f"  run_checks        {checking:8.3f} s   of which {working:.3f} s work (mark {CHECKS_MARK_S} s for 2 years)"
+        f"  run_checks        {checking:8.3f} s   of which {working:.3f} s work "
+        f"(mark {CHECKS_MARK_S} s for 2 years)"
     )
     print(f"  build_record      {building:8.3f} s")
     if years <= 2:

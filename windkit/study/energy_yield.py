@@ -29,6 +29,8 @@ __all__ = ["EnergyYield", "compute_yield"]
 #: Hub heights above this multiple of the mast's main height rest on a long extrapolation:
 #: the mast is then lower than two thirds of the hub (MEASNET site guideline; common practice).
 _HIGHEST_HUB_TO_MAST_RATIO = 1.5
+#: Difference of ground level to the mast that a reviewer should hear of [m], our choice.
+_ELEVATION_WORTH_A_WORD = 150.0
 
 
 @dataclass(frozen=True)
@@ -79,7 +81,7 @@ def compute_yield(study: Study) -> EnergyYield:
     hub_speed = np.asarray(power_law(series, mast_height, turbine.hub_height_m, exponent))
     hub_speed = hub_speed[np.isfinite(hub_speed)]
     density, density_basis = _hub_density(settings, record)
-    averaging = _averaging_effect(curve, record, measured, settings, density)
+    averaging = _averaging_effect(curve, measured, settings, density)
 
     places = settings.layout
     factors = np.array([place.speed_factor for place in places])
@@ -229,25 +231,24 @@ def _density_relative_to_mast(settings: Settings) -> NDArray[np.float64]:
 
 def _averaging_effect(
     curve: PowerCurve,
-    record: pd.DataFrame,
     measured: Outcome,
     settings: Settings,
     air_density: float,
 ) -> float:
     """Energy of the record's own interval over that of its hourly means [1]."""
-    speed = record[str(measured.value("measured.channel"))]
+    main = measured.tables["main"]["wind_speed"]
     scaled = power_law(
-        speed,
+        main,
         measured.number("measured.height_m"),
         settings.turbine.hub_height_m,
         measured.number("measured.shear_exponent"),
     )
-    assert isinstance(record.index, pd.DatetimeIndex)
-    fine = pd.Series(np.asarray(scaled), index=record.index)
+    assert isinstance(main.index, pd.DatetimeIndex)
+    fine = pd.Series(np.asarray(scaled), index=main.index)
     hours = fine.resample("1h")
     whole = hours.count() == round(60 / settings.mast.interval_min)
     hourly = hours.mean()[whole].to_numpy()
-    inside = whole.reindex(record.index.floor("1h")).to_numpy(dtype=bool)
+    inside = whole.reindex(main.index.floor("1h")).to_numpy(dtype=bool)
     if not inside.any():
         return 1.0
     return float(
@@ -286,11 +287,25 @@ def _staircase(settings: Settings, gross: float) -> pd.DataFrame:
 
 
 def _warnings(settings: Settings, mast_height: float) -> list[str]:
+    warnings = []
     ratio = settings.turbine.hub_height_m / mast_height
-    if ratio <= _HIGHEST_HUB_TO_MAST_RATIO:
-        return []
-    return [
-        f"The hub is {ratio:.2f} times as high as the mast's main sensor; above "
-        f"{_HIGHEST_HUB_TO_MAST_RATIO:g} the mast is lower than two thirds of the hub, and the "
-        "profile between them is not measured."
-    ]
+    if ratio > _HIGHEST_HUB_TO_MAST_RATIO:
+        warnings.append(
+            f"The hub is {ratio:.2f} times as high as the mast's main sensor; above "
+            f"{_HIGHEST_HUB_TO_MAST_RATIO:g} the mast is lower than two thirds of the hub, and the "
+            "profile between them is not measured."
+        )
+    assumed = [loss for loss in settings.losses if loss.basis.startswith("assumed")]
+    if assumed:
+        warnings.append(
+            f"{len(assumed)} of {len(settings.losses)} losses are assumed, not computed or agreed; "
+            "their basis stands in the table of losses."
+        )
+    for place in settings.layout:
+        above = place.elevation_m - settings.site.elevation_m
+        if abs(above) > _ELEVATION_WORTH_A_WORD:
+            warnings.append(
+                f"{place.name} stands {abs(above):.0f} m {'above' if above > 0 else 'below'} the "
+                "mast: one mast speaks for such a place only with a flow model behind it."
+            )
+    return warnings

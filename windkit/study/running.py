@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import copy
 import os
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -20,9 +20,11 @@ from windkit.study.artifacts import first_stale_step, load_artifact
 from windkit.study.errors import StudyError
 from windkit.study.folder import Study, open_study
 from windkit.study.ledger import masked_by, read_ledger
+from windkit.study.long_term_lines import refuse_thin_overlap
 from windkit.study.parameters import (
     PARAMETERS,
     open_workbook,
+    overrides_of,
     parameters_of_cell,
     refuse_unknown,
 )
@@ -60,7 +62,13 @@ def check_inputs(study: Study) -> None:
     mast = read_station(settings.mast, study.folder)
     masked_by(mast.frame.iloc[:0], read_ledger(study.ledger))  # its channels, before its spans
     for station in settings.references:
-        read_station(station, study.folder)
+        reading = read_station(station, study.folder)
+        if settings.long_term.reference in (None, station.name):
+            refuse_thin_overlap(
+                mast.frame[settings.mast.main_wind_speed],
+                reading.frame[station.main_wind_speed],
+                station.name,
+            )
 
 
 def run_study(
@@ -115,6 +123,7 @@ def run_study(
     for step in steps:
         _check_parameters(study, step, notebooks[step.name], given.get(step.workbook, {}))
     _refuse_stale_before(study, steps[0])
+    _refuse_other_parameters(study, STEPS[: STEPS.index(steps[0])])
     check_inputs(study)
     for step in steps:
         _execute(study, step, notebooks[step.name], given.get(step.workbook, {}), progress)
@@ -145,6 +154,31 @@ def _refuse_stale_before(study: Study, first: Step) -> None:
             rule="each step stands on those before it",
             remedy=f"run `sitestudy run {study.folder.name} --from {stale}`",
         )
+
+
+def _refuse_other_parameters(study: Study, before: Sequence[Step]) -> None:
+    """Refuse to build upon a step that was run with parameters its workbook does not hold now."""
+    for step in before:
+        asked = overrides_of(step.workbook, _parameters_of(step, _read_workbook(study, step)))
+        made_with = load_artifact(study, step.name).overrides
+        if made_with != asked:
+            raise StudyError.of(
+                file=f"results/{step.name}",
+                met=f"it was made with {_listed(made_with)}, but its workbook now asks for "
+                f"{_listed(asked)}",
+                rule="a value set for one run is not carried into the next unseen",
+                remedy=f"run `sitestudy run {study.folder.name} --from {step.name}`, with the "
+                "same --set if it is meant",
+            )
+
+
+def _listed(overrides: Mapping[str, Any]) -> str:
+    return ", ".join(f"{key} = {value!r}" for key, value in overrides.items()) or "study.toml alone"
+
+
+def _parameters_of(step: Step, notebook: nbformat.NotebookNode) -> dict[str, Any]:
+    cell = next(c for c in notebook.cells if PARAMETERS_TAG in c.metadata.get("tags", []))
+    return parameters_of_cell(step.workbook, cell.source)
 
 
 def _read_workbook(study: Study, step: Step) -> nbformat.NotebookNode:
@@ -181,8 +215,7 @@ def _check_parameters(
     study: Study, step: Step, notebook: nbformat.NotebookNode, given: Mapping[str, Any]
 ) -> None:
     """Open the study as the workbook will, so that a wrong value shows before anything runs."""
-    cell = next(c for c in notebook.cells if PARAMETERS_TAG in c.metadata.get("tags", []))
-    values = {**parameters_of_cell(step.workbook, cell.source), **given}
+    values = {**_parameters_of(step, notebook), **given}
     file, named = f"workbooks/{step.workbook}.ipynb", values.get("study_folder")
     if named is None or (study.folder / "workbooks" / str(named)).resolve() != study.folder:
         raise StudyError.of(

@@ -82,7 +82,7 @@ def test_the_first_state_shows_a_span_and_what_is_left(panel):
     assert plain(panel.counter).startswith(f"{count} of {count} spans left to decide")
     assert f"1 of {count}" in plain(panel.facts)
     assert str(panel.span["reason"]) in plain(panel.facts)
-    assert panel.picture.value.startswith(b"\x89PNG")
+    assert bytes(panel.picture.value).startswith(b"\x89PNG")
     assert panel.undo.disabled
     assert panel.decided.empty
     assert repr(panel) == f"ReviewPanel: {count} of {count} spans left to decide"
@@ -300,6 +300,6 @@ def test_a_run_without_a_page_freezes_into_the_report_the_same_twice(folder, rec
     html = _executed(folder, "review.ipynb")
     assert re.search(r"<b>\d+ of \d+ spans left to decide</b>", html)
     assert html.count('<img src="data:image/png;base64,') == 1
-    assert html.count('<table class="site-table">') == 1
+    assert html.count('<table class="site-table') == 1
     assert "ReviewPanel" not in html.split("</details>")[1]
     assert html == _executed(folder, "again.ipynb")

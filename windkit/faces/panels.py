@@ -308,13 +308,18 @@ def _facts(span: pd.Series, place: int, count: int) -> str:
         "To (UTC)": f"{span['to']:%Y-%m-%d %H:%M}",
         "Values": span["count"],
         "Believed now": span["believed"],
-        "Measure": f"{span['measure']:.4g}".replace("-", "−"),
-        "Threshold": f"{span['threshold']:.4g}".replace("-", "−"),
+        "Measure": span["measure"],
+        "Threshold": span["threshold"],
         "State": f"decided: {_SAID[span['decision']]}" if span["decision"] else span["state"],
     }
     said = f"{span['rule']}, {number_text(place)} of {number_text(count)}: {span['reason']}"
-    table = Table([row], caption=said).to_html(with_style=True)
-    return f'<div style="color: {INK}; line-height: 1.4">{table}</div>'
+    formats = dict.fromkeys(("Measure", "Threshold"), _short)
+    table = Table([row], caption=said, formats=formats).to_html(with_style=True)
+    return f'<div style="color: {INK}; line-height: 1.4; overflow-x: auto">{table}</div>'
+
+
+def _short(value: float) -> str:
+    return f"{value:.5g}".replace("-", "−")
 
 
 def _missing(who: str, reason: str) -> str:

@@ -9,7 +9,9 @@ never written to.
 from __future__ import annotations
 
 import copy
+import json
 import os
+import re
 from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
 from typing import Any
@@ -40,6 +42,9 @@ PARAMETERS_TAG = "parameters"
 
 #: Longest time one cell may take [s]; a kernel that died would otherwise hang the run.
 _CELL_TIMEOUT = 900
+
+#: How a running kernel names the parts of a panel.
+_MODEL_ID = re.compile(r"[0-9a-f]{32}")
 
 Progress = Callable[[str, int, int], None]
 Parameters = Mapping[str, Mapping[str, Any]]
@@ -299,9 +304,34 @@ def _inject(notebook: nbformat.NotebookNode, values: Mapping[str, Any]) -> None:
     notebook.cells.insert(place + 1, cell)
 
 
+def _with_settled_ids(notebook: nbformat.NotebookNode) -> str:
+    """The notebook as text, the random ids of its panels replaced by numbers.
+
+    Numbers go along the references from what is shown, so that they do not depend on the ids.
+    """
+    widgets = notebook.metadata.get("widgets", {})
+    models = {name: json.dumps(m) for w in widgets.values() for name, m in w["state"].items()}
+    text = nbformat.writes(notebook)
+    found: dict[str, None] = {}
+
+    def follow(inside: str) -> None:
+        for name in _MODEL_ID.findall(inside):
+            if name in models and name not in found:
+                found[name] = None
+                follow(models[name])
+
+    follow(json.dumps([cell.get("outputs", []) for cell in notebook.cells]))
+    for number, name in enumerate([*found, *sorted(set(models) - set(found))]):
+        text = text.replace(name, f"panel-{number:04d}")
+    settled = nbformat.reads(text, as_version=4)
+    for widget in settled.metadata.get("widgets", {}).values():
+        widget["state"] = dict(sorted(widget["state"].items()))
+    return str(nbformat.writes(settled)) + "\n"
+
+
 def _write(file: Path, notebook: nbformat.NotebookNode) -> Path:
     file.parent.mkdir(parents=True, exist_ok=True)
     part = file.with_suffix(".part")
-    nbformat.write(notebook, part)
+    part.write_text(_with_settled_ids(notebook), encoding="utf-8")
     os.replace(part, file)
     return file

@@ -19,9 +19,9 @@ from windkit.kernels.profile import fit_shear
 from windkit.kernels.weibull import WeibullFit, fit_weibull
 from windkit.study import campaign
 from windkit.study.artifacts import Outcome, Row
-from windkit.study.averaging import SelectiveAverage, selective_average
 from windkit.study.check_worth import worth_of_checks
 from windkit.study.checks import free_of_shadow, pair_ratio
+from windkit.study.cup_pair import PairSpeed, speed_of_pair
 from windkit.study.folder import Study
 from windkit.study.gap_filling import FilledChannel, fill_gaps
 from windkit.study.ledger import read_ledger
@@ -239,7 +239,7 @@ def examine_record(study: Study, record: Record) -> Measured:
 
 def _main_series(
     study: Study, record: Record
-) -> tuple[pd.DataFrame, SelectiveAverage | None, FilledChannel | None]:
+) -> tuple[pd.DataFrame, PairSpeed | None, FilledChannel | None]:
     """The speed and direction the study stands on, and what each speed stands on.
 
     Columns wind_speed [m/s], wind_direction [deg], basis (a channel, ``both``, or ``filled``).
@@ -251,7 +251,7 @@ def _main_series(
     basis = pd.Series(np.where(speed.notna(), main, ""), index=speed.index)
     average = None
     if choice.main_pair is not None:
-        average = selective_average(
+        average = speed_of_pair(
             record, main, choice.main_pair, check_settings=study.settings.checks
         )
         speed, basis = average.wind_speed, average.basis
@@ -274,7 +274,7 @@ def _rows(
     record: Record,
     main: ChannelSettings,
     main_table: pd.DataFrame,
-    average: SelectiveAverage | None,
+    average: PairSpeed | None,
     filled: FilledChannel | None,
 ) -> list[Row]:
     """The figures that say what the main speed is."""

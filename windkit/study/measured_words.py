@@ -8,7 +8,7 @@ from __future__ import annotations
 import pandas as pd
 
 from windkit.kernels.weibull import WeibullFit
-from windkit.study.averaging import SelectiveAverage
+from windkit.study.cup_pair import PairSpeed
 from windkit.study.gap_filling import FilledChannel
 from windkit.study.ledger import AUTOMATIC
 from windkit.study.record import Record
@@ -111,7 +111,7 @@ def record_in_words(
 
 
 def handling_in_words(
-    average: SelectiveAverage | None,
+    average: PairSpeed | None,
     filled: FilledChannel | None,
     worth: pd.DataFrame,
     north: pd.DataFrame,

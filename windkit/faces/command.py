@@ -68,6 +68,13 @@ def _parser() -> argparse.ArgumentParser:
     )
     new.add_argument("folder", metavar="DIR", help="folder to make; nothing is overwritten")
     new.add_argument("--demo", action="store_true", help="fill it with the demo study")
+    new.add_argument(
+        "--from",
+        dest="from_file",
+        metavar="FILE",
+        help="draft the mast's section from a data file, or from a station description (JSON, IEA "
+        "Wind Task 43); what no file tells is marked ASK",
+    )
     new.set_defaults(act=_new)
 
     run = verbs.add_parser(
@@ -112,9 +119,14 @@ def _parser() -> argparse.ArgumentParser:
 def _new(chosen: argparse.Namespace) -> int:
     from windkit.study.shipped import make_study
 
-    folder = make_study(chosen.folder, demo=chosen.demo)
+    folder = make_study(chosen.folder, demo=chosen.demo, from_file=chosen.from_file)
     print(f"made {chosen.folder}/")
-    if chosen.demo:
+    if chosen.from_file is not None:
+        asked = (folder / "study.toml").read_text(encoding="utf-8").count("# ASK")
+        print(f"the mast is drafted from {chosen.from_file}; {asked} questions are marked ASK")
+        print("next: answer them and fill in the rest of study.toml, then")
+        print(f"      {_own_name()} run {chosen.folder}")
+    elif chosen.demo:
         print(f"next: {_own_name()} run {chosen.folder}")
     else:
         print(f"next: put the client's files into {folder.name}/data/, fill in study.toml, then")

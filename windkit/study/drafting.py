@@ -111,7 +111,7 @@ def draft_from_file(path: Path, *, written: str | None = None) -> StationDraft:
     body = [row for row in rows[first:] if len(row) == len(names)]
     decimal = _decimal(body, delimiter)
     time_at, formats = _time_column(names, body, path)
-    draft = StationDraft()
+    draft = StationDraft(headers=names)
     values = draft.station
     values["name"] = OPEN
     draft.remarks["name"] = "what is the station called"
@@ -126,14 +126,15 @@ def draft_from_file(path: Path, *, written: str | None = None) -> StationDraft:
     values["time_column"] = names[time_at]
     stamps = [row[time_at] for row in body]
     _draft_clock(draft, stamps, formats)
-    codes = _codes(body, time_at, decimal)
-    values["missing"] = codes
-    if codes:
-        draft.remarks["missing"] = "met in the first rows; do all of them mean no value"
+    values["missing"] = []  # its place in the section
     under = rows[header + 1 : first]
     for at, name in enumerate(names):
         if at != time_at and name:
             _draft_channel(draft, name, [row[at] for row in under if len(row) == len(names)])
+    drafted = {names.index(str(channel["column"])) for channel in draft.channels}
+    values["missing"] = _codes(body, sorted(drafted), decimal)
+    if values["missing"]:
+        draft.remarks["missing"] = "met in the first rows; do all of them mean no value"
     _draft_main(draft)
     draft.notes.append(
         f"drafted from the first {len(body)} rows of {path.name}; quantities, statistics and "
@@ -275,12 +276,10 @@ def _draft_clock(draft: StationDraft, stamps: list[str], formats: list[str]) -> 
     remarks["calm_below_m_s"] = "speeds below it are calms; often the cup's starting speed"
 
 
-def _codes(body: list[list[str]], time_at: int, decimal: str) -> list[str]:
-    """Texts among numbers, and numbers that are usual codes."""
+def _codes(body: list[list[str]], columns: list[int], decimal: str) -> list[str]:
+    """Texts among the numbers of these columns, and numbers that are usual codes."""
     found: Counter[str] = Counter()
-    for at in range(len(body[0]) if body else 0):
-        if at == time_at:
-            continue
+    for at in columns:
         numbers: Counter[float] = Counter()
         spelled: dict[float, str] = {}
         for row in body:

@@ -11,10 +11,22 @@ import datetime as dt
 import json
 from dataclasses import dataclass, field
 
-__all__ = ["OPEN", "StationDraft", "draft_text"]
+__all__ = ["OPEN", "StationDraft", "draft_text", "joined_drafts"]
 
 #: Stands where only a person can say; no key of a station takes it.
 OPEN = "?"
+#: What only the file tells, whatever its description says.
+_LAYOUT = (
+    "files",
+    "encoding",
+    "delimiter",
+    "decimal",
+    "skip_rows",
+    "skip_rows_after_header",
+    "time_column",
+    "time_format",
+    "missing",
+)
 
 
 @dataclass
@@ -31,12 +43,15 @@ class StationDraft:
         By key (channels: ``number.key``): where a value comes from, or what to ask.
     notes : list of str
         What else was met.
+    headers : list of str
+        Headers of the file, drafted or not; none if no file was looked at.
     """
 
     station: dict[str, object] = field(default_factory=dict)
     channels: list[dict[str, object]] = field(default_factory=list)
     remarks: dict[str, str] = field(default_factory=dict)
     notes: list[str] = field(default_factory=list)
+    headers: list[str] = field(default_factory=list)
 
     @property
     def questions(self) -> list[str]:
@@ -67,7 +82,7 @@ def draft_text(draft: StationDraft, *, section: str = "mast") -> str:
         TOML. Each `OPEN` value carries a comment that begins with ``ASK``.
     """
     title = f"[[{section}]]" if section == "references" else f"[{section}]"
-    lines = [f"# {note}" for note in draft.notes] + [title]
+    lines = [f"# {_printable(note)}" for note in draft.notes] + [title]
     lines += [_line(key, value, draft.remarks.get(key)) for key, value in draft.station.items()]
     for number, channel in enumerate(draft.channels):
         lines += ["", f"[[{section}.channels]]"]
@@ -78,11 +93,80 @@ def draft_text(draft: StationDraft, *, section: str = "mast") -> str:
     return "\n".join(lines) + "\n"
 
 
+def joined_drafts(file: StationDraft, description: StationDraft) -> StationDraft:
+    """One draft from a data file and from the description of its station.
+
+    Parameters
+    ----------
+    file : StationDraft
+        Knows how the file is written: delimiter, header, stamps, headers.
+    description : StationDraft
+        Knows what was measured: quantities, heights, booms, calibrations, clock.
+
+    Returns
+    -------
+    StationDraft
+        The file's layout with the description's channels; columns that the description leaves
+        out follow as the file's header suggests them. What either leaves open stays open, unless
+        the other answers it.
+    """
+    joined = StationDraft(headers=list(file.headers))
+    for key in [*file.station, *description.station]:
+        own, told = file.station.get(key, OPEN), description.station.get(key, OPEN)
+        layout = key in _LAYOUT or told == OPEN
+        joined.station[key] = own if layout else told
+        remark = (file if layout else description).remarks.get(key)
+        if remark and (joined.station[key] == OPEN or layout):
+            joined.remarks[key] = remark
+        if key == "interval_min" and OPEN not in (own, told) and own != told:
+            joined.remarks[key] = f"as described; the commonest step in the file is {own}"
+    here = [c for c in description.channels if c["column"] in file.headers]
+    described = {channel["column"] for channel in description.channels}
+    more = [c for c in file.channels if c["column"] not in described]
+    for draft, channels in ((description, here), (file, more)):
+        for channel in channels:
+            names = {str(each["name"]) for each in joined.channels}
+            number, old = len(joined.channels), draft.channels.index(channel)
+            name = str(channel["name"])
+            while name in names:
+                name += "_2"
+            joined.channels.append({**channel, "name": name})
+            for key in channel:
+                if f"{old}.{key}" in draft.remarks:
+                    joined.remarks[f"{number}.{key}"] = draft.remarks[f"{old}.{key}"]
+    joined.notes = [note for note in description.notes if note not in file.notes]
+    joined.notes += [
+        f"column '{each['column']}' is described and does not stand in the file: not drafted"
+        for each in description.channels
+        if each not in here
+    ]
+    if more:
+        joined.notes.append(
+            "not described, drafted from the header alone: "
+            + ", ".join(f"'{each['column']}'" for each in more)
+        )
+    names = {str(channel["name"]) for channel in joined.channels}
+    for key in ("main_wind_speed", "main_wind_direction"):
+        for draft in (description, file):
+            if draft.station.get(key) in names:
+                joined.station[key] = draft.station[key]
+                break
+        else:
+            if key in joined.station:
+                joined.station[key] = OPEN
+    return joined
+
+
 def _line(key: str, value: object, remark: str | None) -> str:
     text = f"{key} = {_toml(value)}"
     if value == OPEN:
-        return f"{text}  # ASK: {remark or 'only a person can say'}"
-    return f"{text}  # {remark}" if remark else text
+        return f"{text}  # ASK: {_printable(remark or 'only a person can say')}"
+    return f"{text}  # {_printable(remark)}" if remark else text
+
+
+def _printable(text: str) -> str:
+    """A text that fits into a comment: headers of files may hold line ends and worse."""
+    return "".join(sign if sign.isprintable() else " " for sign in text)
 
 
 def _toml(value: object) -> str:

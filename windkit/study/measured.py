@@ -144,8 +144,8 @@ def examine_record(study: Study, record: Record) -> Measured:
     speed = main_table["wind_speed"].to_numpy()
     direction = main_table["wind_direction"].to_numpy()
     names = [channel.name for channel in settings.mean_speeds]
-    by_month = campaign.monthly_means(main_table[["wind_speed"]], settings.interval_min)
-    by_month = by_month["wind_speed"].dropna()
+    main_months = campaign.monthly_means(main_table[["wind_speed"]], settings.interval_min)
+    by_month = main_months["wind_speed"].dropna()
     share = float(np.isfinite(speed).sum() / record.reading.expected_count)
     heights = campaign.heights_table(frame, main, settings, free)
     exponent, exponent_basis, warnings = _exponent(heights, main)

@@ -265,7 +265,7 @@ def read_settings(file: Path) -> dict[str, Any]:
             rule="the file is TOML in UTF-8",
             remedy="save it again with the encoding set to UTF-8",
         ) from None
-    except tomllib.TOMLDecodeError as error:
+    except ValueError as error:  # a fault of TOML, or a number of thousands of digits
         raise StudyError.of(
             file=file.name,
             met=str(error),

@@ -93,6 +93,8 @@ _UNIT_BY_ENDING: dict[str, str] = {
     "_m_s": "m/s",
     "_kw": "kW",
     "_deg": "°",
+    "_hpa": "hPa",
+    "_c": "°C",
     "_m": "m",
 }
 

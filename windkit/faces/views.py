@@ -12,6 +12,7 @@ from typing import Any
 from windkit.faces.tables import Table, exceedance_table_view, results_table, value_text
 from windkit.study.artifacts import Outcome
 from windkit.study.folder import Study
+from windkit.study.verdict import verdict_matrix
 
 __all__ = [
     "Said",
@@ -21,11 +22,14 @@ __all__ = [
     "results",
     "say",
     "settings",
+    "verdict",
     "warnings",
     "written",
 ]
 
 _LONGEST_VALUE = 60
+#: Groups held against no more than these are shown as rows.
+_FEW_COLUMNS = ("every class", "normal range", "extreme range", "the machine")
 
 
 class Said:
@@ -85,6 +89,19 @@ def written(outcome: Outcome) -> Said:
     return Said(f"Written to results/{outcome.step}/: artifact.json, {files}.")
 
 
+def verdict(outcome: Outcome, group: str) -> Table:
+    """One group of the verdict: words by class where there are classes, else rows with limits."""
+    table = outcome.tables["verdict"]
+    caption = f"Verdict: {group}"
+    if table.loc[table["group"] == group, "against"].nunique() > len(_FEW_COLUMNS):
+        return Table(verdict_matrix(table, group), caption=caption, formats={"Site": ".4g"})
+    own = table[table["group"] == group].drop(columns="group")
+    if own["limit"].isna().all():
+        own = own[["condition", "verdict", "note"]]
+    formats = {name: ".4g" for name in ("site", "limit") if name in own}
+    return Table(own, caption=caption, formats=formats, quiet=["note"])
+
+
 def settings(study: Study, sections: Sequence[str]) -> Table:
     """The decisions this workbook stands on: key, value, and where the value was set.
 
@@ -93,7 +110,7 @@ def settings(study: Study, sections: Sequence[str]) -> Table:
     rows = []
     for section in sections:
         for key, value in study.section(section).items():
-            if value is None or _is_list_of_tables(value):
+            if value in (None, "") or _is_list_of_tables(value):
                 continue
             path = f"{section}.{key}"
             origin = "parameters cell" if path in study.overrides else "study.toml"

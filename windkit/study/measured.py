@@ -22,6 +22,7 @@ from windkit.study.ledger import AUTOMATIC, read_ledger
 from windkit.study.reading import read_station
 from windkit.study.record import Record, build_record
 from windkit.study.stations import ChannelSettings, StationSettings
+from windkit.study.unit_slips import refuse_unit_slips
 
 __all__ = ["Measured", "examine_record", "load_record"]
 
@@ -94,6 +95,7 @@ class Measured:
 def load_record(study: Study) -> Record:
     """Read the mast's files, run the checks and apply the ledger."""
     reading = read_station(study.settings.mast, study.folder)
+    refuse_unit_slips(reading)
     return build_record(reading, study.settings.checks, read_ledger(study.ledger))
 
 

@@ -29,6 +29,7 @@ from windkit.study.parameters import (
 from windkit.study.reading import read_station
 from windkit.study.steps import STEPS, Step, step_named
 from windkit.study.turbine import read_curve
+from windkit.study.unit_slips import refuse_unit_slips
 
 __all__ = ["EXECUTED", "check_inputs", "executed_workbooks", "run_study"]
 
@@ -59,8 +60,9 @@ def check_inputs(study: Study) -> None:
             study.path(name, key=f"{place}.files")
     mast = read_station(settings.mast, study.folder)
     masked_by(mast.frame.iloc[:0], read_ledger(study.ledger))  # its channels, before its spans
+    refuse_unit_slips(mast)
     for station in settings.references:
-        read_station(station, study.folder)
+        refuse_unit_slips(read_station(station, study.folder))
 
 
 def run_study(

@@ -44,6 +44,15 @@ _ASSUMED_EXPONENT_IN_DOUBT = 0.1
 _LEAST_MAST_SHARE = 2 / 3
 
 
+_METHOD_COLUMNS = [
+    "method",
+    "chosen",
+    "hub_mean_speed_m_s",
+    "left_out_mean_error",
+    "left_out_typical_error",
+]
+
+
 @dataclass(frozen=True)
 class HubWind:
     """Wind at hub height above the mast.
@@ -177,7 +186,7 @@ def carry_to_hub(
         method=method,
         methods=_methods(data, choice, speed, kinds, main_height, hub)
         if has_profile
-        else pd.DataFrame(columns=["method", "chosen", "hub_mean_speed_m_s"]),
+        else pd.DataFrame(columns=_METHOD_COLUMNS),
         exponent_by_hour=_exponent_by_hour(found, kinds, speed, main_height, hub, choice),
         levels=_levels(found, kinds),
         left_out=left_out,
@@ -252,10 +261,7 @@ def _methods(
                 test.typical_error if test else np.nan,
             )
         )
-    columns = [
-        "method", "chosen", "hub_mean_speed_m_s", "left_out_mean_error", "left_out_typical_error",
-    ]  # fmt: skip
-    return pd.DataFrame(rows, columns=columns)
+    return pd.DataFrame(rows, columns=_METHOD_COLUMNS)
 
 
 def _exponent_by_hour(

@@ -316,6 +316,7 @@ def return_levels(
     ax.xaxis.set_major_formatter(
         FuncFormatter(lambda value, _position: names.get(round(value, 6), ""))
     )
-    ax.set_xlim(float(paper(1.05)), float(paper(120.0)))
+    lowest = min(1.05, float(periods[shown].min())) if shown.any() else 1.05
+    ax.set_xlim(float(paper(lowest)) - 0.15, float(paper(120.0)))
     legend_below(ax, 3)
     return ax

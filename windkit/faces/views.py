@@ -6,13 +6,19 @@ is computed here.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
-from windkit.faces.tables import Table, exceedance_table_view, results_table, value_text
+from windkit.faces.tables import (
+    Table,
+    exceedance_table_view,
+    results_table,
+    unit_text,
+    value_text,
+)
 from windkit.study.artifacts import Outcome
 from windkit.study.folder import Study
-from windkit.study.verdict import verdict_matrix
+from windkit.study.verdict import TURBULENCE, verdict_matrix
 
 __all__ = [
     "Said",
@@ -93,13 +99,29 @@ def verdict(outcome: Outcome, group: str) -> Table:
     """One group of the verdict: words by class where there are classes, else rows with limits."""
     table = outcome.tables["verdict"]
     caption = f"Verdict: {group}"
-    if table.loc[table["group"] == group, "against"].nunique() > len(_FEW_COLUMNS):
-        return Table(verdict_matrix(table, group), caption=caption, formats={"Site": ".4g"})
-    own = table[table["group"] == group].drop(columns="group")
-    if own["limit"].isna().all():
-        own = own[["condition", "verdict", "note"]]
-    formats = {name: ".4g" for name in ("site", "limit") if name in own}
-    return Table(own, caption=caption, formats=formats, quiet=["note"])
+    part = table[table["group"] == group].drop(columns="group")
+    if part["against"].nunique() > len(_FEW_COLUMNS):
+        shown = verdict_matrix(table, group)
+        shown["Site"] = _with_units(shown["Site"], shown["Unit"], group)
+        return Table(shown.drop(columns="Unit"), caption=caption)
+    if part["limit"].isna().all():
+        return Table(part[["condition", "verdict", "note"]], caption=caption, quiet=["note"])
+    part = part.assign(
+        site=_with_units(part["site"], part["unit"], group),
+        limit=_with_units(part["limit"], part["unit"], group),
+    )
+    return Table(part.drop(columns="unit"), caption=caption, quiet=["note"])
+
+
+def _with_units(values: Iterable[Any], units: Iterable[str], group: str) -> list[str]:
+    """Each value as a person reads it, turbulence in per cent."""
+    texts = []
+    for value, unit in zip(values, units, strict=True):
+        percent = unit == "1" and group == TURBULENCE
+        text = value_text(value, unit, as_percent=percent)
+        sign = "%" if percent else "" if unit == "1" else unit_text(unit)
+        texts.append(f"{text} {sign}".strip())
+    return texts
 
 
 def settings(study: Study, sections: Sequence[str]) -> Table:

@@ -232,7 +232,9 @@ def _at_hub(
         )
     if rough.figure_roughness_class is None:
         carried = log_law(speed, rough.height_m, hub, site)
-        return float(carried), f"carried up by the log law over a roughness of {site:g} m"
+        return float(carried), (
+            f"carried up by the log law over a roughness of {site:g} m, for screening only"
+        )
     source = WIND_ATLAS_CLASSES[rough.figure_roughness_class]
     try:
         coriolis = coriolis_parameter(settings.site.latitude_deg)

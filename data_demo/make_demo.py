@@ -176,7 +176,7 @@ def as_rows(
         places = 2 if name.startswith("Speed") else 0 if whole else 1
         text = printed(values, places, wrap=360 if bearing else None)
         text[rng.random(time.size) < 0.0004] = "-999"
-        text[rng.random(time.size) < 0.0001] = "NAN"
+        text[rng.random(time.size) < 0.0001] = "--"
         for stem, start, end, what in BLEMISHES:
             if "-999" in what and name.startswith(stem):
                 text[within(time, start, end)] = "-999"

@@ -145,6 +145,9 @@ def test_second_run_gives_the_same_bytes(study: Path, tmp_path: Path) -> None:
     assert main(["run", str(again), "--quiet"]) == 0
     for name, content in before.items():
         assert (again / "handover" / name).read_bytes() == content, name
+    # Panels carry random ids in a running kernel; what is handed over must not.
+    for file in sorted((study / "handover" / "workbooks").glob("*.ipynb")):
+        assert file.read_bytes() == (again / "handover" / "workbooks" / file.name).read_bytes()
 
 
 def test_another_hub_height_moves_energy_the_right_way(study: Path, results: dict) -> None:

@@ -240,7 +240,7 @@ BAD_ARGUMENTS: dict[str, tuple[list[str], list[str]]] = {
     ),
     "unknown method": (
         ["--set", "3_measure_correlate_predict.method=guess"],
-        ["long_term.method: is \"guess\"; it must be 'ratio'"],
+        ["long_term.method: is \"guess\"; it must be 'blend'"],
     ),
     "unknown reference": (
         ["--set", "3_measure_correlate_predict.reference=Near Skerry"],

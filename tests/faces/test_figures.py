@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import itertools
+
 import matplotlib as mpl
 
 mpl.use("Agg")
@@ -58,7 +60,7 @@ DRAWINGS = {
     "speed_distribution": lambda ax: figures.speed_distribution(
         [0, 0.5, 1.5], [0.1, 0.9], 1, 2, ax=ax
     ),
-    "coverage": lambda ax: figures.coverage(RECOVERY, ax=ax),
+    "recovery_map": lambda ax: figures.recovery_map(RECOVERY, ax=ax),
     "profile": lambda ax: figures.profile([40, 80], [6.4, 7.2], 0.17, 100, ax=ax),
     "turbulence_by_speed": lambda ax: figures.turbulence_by_speed(
         [4, 5], [0.1, 0.1], [0.2, 0.2], ax=ax
@@ -126,7 +128,7 @@ def test_the_session_keeps_its_own_settings():
 
 
 def test_every_axis_with_a_dimension_names_its_unit():
-    for name in set(DRAWINGS) - {"coverage", "method_comparison", "yearly_means"}:
+    for name in set(DRAWINGS) - {"recovery_map", "method_comparison", "yearly_means"}:
         ax = DRAWINGS[name](None)
         labels = f"{ax.get_xlabel()} {ax.get_ylabel()}"
         shares = "uncertainty" in labels.lower()
@@ -145,7 +147,7 @@ def test_distribution_is_drawn_per_metre_a_second():
 
 
 def test_almost_all_is_not_all_in_the_coverage():
-    texts = [text.get_text() for text in DRAWINGS["coverage"](None).texts]
+    texts = [text.get_text() for text in DRAWINGS["recovery_map"](None).texts]
     assert texts == ["99", "–", "100", "0"]
 
 
@@ -279,3 +281,57 @@ def test_conditions_without_data_say_so() -> None:
     )
     level = figures.exponent_by_hour(pd.DataFrame({"Dec-Feb": [np.nan] * 24}))
     assert level.texts[0].get_text() == "mast and hub are at one height"
+
+
+def test_the_campaign_is_shaded_exactly() -> None:
+    def shaded(campaign: tuple[float, float]) -> tuple[float, float]:
+        ax = figures.yearly_means(YEARS, np.full(20, 7.0), campaign_years=campaign)
+        box = ax.patches[0].get_extents().transformed(ax.transData.inverted())
+        return box.x0, box.x1
+
+    assert shaded((2022.83, 2023.99)) == pytest.approx((2022.83, 2023.99))
+    # Two whole numbers are two calendar years, the second to its end.
+    assert shaded((2022, 2023)) == pytest.approx((2022, 2024))
+
+
+def test_a_yearly_mean_stands_in_the_middle_of_its_year() -> None:
+    ax = DRAWINGS["yearly_means"](None)
+    assert ax.get_lines()[-1].get_xdata().tolist() == (YEARS + 0.5).tolist()
+    ticks = {
+        text.get_text(): at for text, at in zip(ax.get_xticklabels(), ax.get_xticks(), strict=True)
+    }
+    assert ticks["2023"] == 2023.5
+    assert len(ticks) <= 10
+
+
+def test_labels_of_many_months_do_not_touch() -> None:
+    months = [f"{year}-{month:02d}" for year in (2022, 2023) for month in range(1, 13)]
+    ax = figures.recovery_map(pd.DataFrame({"a": np.ones(24)}, index=months))
+    figure = ax.get_figure()
+    figure.draw_without_rendering()
+    boxes = [text.get_window_extent() for text in ax.get_xticklabels()]
+    assert all(left.x1 <= right.x0 for left, right in itertools.pairwise(boxes))
+    assert ax.get_xticklabels()[10].get_text() == "Nov 22"
+
+
+def test_bars_of_a_distribution_say_what_they_are() -> None:
+    def names(**more: str) -> list[str]:
+        ax = figures.speed_distribution([0, 0.5, 1.5], [0.1, 0.9], **more)
+        return [text.get_text() for text in ax.get_legend().get_texts()]
+
+    assert names() == ["record"]
+    assert names(label="campaign") == ["campaign"]
+
+
+@pytest.mark.parametrize("name", ["exceedance_curves", "profile"])
+def test_a_legend_over_lines_stands_outside(name: str) -> None:
+    ax = DRAWINGS[name](None)
+    assert ax.get_legend() is None
+    assert ax.get_figure().legends
+
+
+@pytest.mark.parametrize("name", DRAWINGS)
+def test_no_figure_is_wider_than_the_page(name: str) -> None:
+    width = DRAWINGS[name](None).get_figure().get_figwidth()
+    # 210 mm of paper less the margins; the report prints a figure at its own size (ISO 216: A4).
+    assert width <= look.PAGE_WIDTH <= (210 - 17 - 18) / 25.4

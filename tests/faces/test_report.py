@@ -322,3 +322,20 @@ def test_a_cover_text_cannot_break_out_of_the_page_style(tmp_path):
 def test_versions_name_python_and_the_libraries_behind_the_numbers():
     found = versions_in_use()
     assert {"Python", "numpy", "scipy", "pandas", "matplotlib", "windrose"} <= set(found)
+
+
+def test_what_a_reviewer_should_mind_stands_on_the_cover(tmp_path):
+    cover = Cover(**{**COVER.__dict__, "mind": ["Step yield was run with a < b.", "Second."]})
+    page = write_report(
+        tmp_path / "r.html", cover=cover, notebooks=_study(tmp_path), study_folder=tmp_path
+    ).read_text()
+    front = page[page.index('<header class="cover">') : page.index("</header>")]
+    assert "<h2>What a reviewer should mind</h2>" in front
+    assert "<li>Step yield was run with a &lt; b.</li>\n<li>Second.</li>" in front
+    assert "reviewer should mind" not in _write(tmp_path).read_text()
+
+
+def test_no_margin_of_the_first_page_is_left_to_the_browser(html):
+    first = re.search(r"@page :first \{(.*?\} )\}", html, re.S)[1]
+    assert first.count('content: ""') == 6
+    assert "none" not in first

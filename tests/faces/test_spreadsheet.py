@@ -12,7 +12,7 @@ import pandas as pd
 import pytest
 
 from windkit.faces import spreadsheet
-from windkit.faces.spreadsheet import CONTENTS, write_tables
+from windkit.faces.spreadsheet import CONTENTS, RESULTS, write_tables
 
 
 def _tables():
@@ -29,34 +29,86 @@ def _tables():
     return {"Monthly": monthly, "Series": pd.DataFrame({"time": times, "energy": [1.5, 2.5]})}
 
 
-RESULTS = [
+FIGURES = [
     Row(label="Net P50", value=45123.4, unit="MWh/year", basis="yield"),
     Row(label="80 % interval", value=(6.9, 7.3), unit="m/s", basis="@blocks"),
+    Row(label="Recovery", value=0.98, unit="1", basis="of 61,344", as_percent=True),
 ]
 
 
 @pytest.fixture(scope="module")
 def book(tmp_path_factory):
     path = tmp_path_factory.mktemp("book") / "tables.xlsx"
-    return openpyxl.load_workbook(write_tables(path, _tables(), RESULTS, title="Invented Ridge"))
+    said = ["Step yield was so."]
+    return openpyxl.load_workbook(
+        write_tables(path, _tables(), FIGURES, title="Invented Ridge", departures=said)
+    )
 
 
 def _rows(sheet):
     return [list(row) for row in sheet.iter_rows(values_only=True)]
 
 
-def test_first_sheet_lists_results_and_sheets_with_unit_and_basis(book):
-    assert book.sheetnames == [CONTENTS, "Monthly", "Series"]
-    rows = _rows(book[CONTENTS])
+def test_first_sheet_is_a_list_of_the_others(book):
+    assert book.sheetnames == [CONTENTS, RESULTS, "Monthly", "Series"]
+    assert _rows(book[CONTENTS]) == [
+        ["Sheet", "Content", "Rows", "Columns", "Basis"],
+        [RESULTS, "Figures of merit with unit and basis", 3, 5, None],
+        ["Monthly", "Monthly means", 2, 3, "measured"],
+        ["Series", "Series", 2, 2, None],
+    ]
+    assert book[CONTENTS].freeze_panes == "A2"
+    assert book[CONTENTS]["A3"].hyperlink.target == "#'Monthly'!A1"
+
+
+def test_results_stand_with_unit_and_basis_below_the_departures(book):
+    rows = _rows(book[RESULTS])
     assert rows[0][0] == "Invented Ridge"
-    assert ["Net P50", 45123.4, None, "MWh/year", "yield"] in rows
-    assert ["80 % interval", 6.9, 7.3, "m/s", "@blocks"] in rows
-    assert ["Monthly", 2, 3, "Monthly means", "measured"] in rows
+    assert [row[0] for row in rows[2:4]] == ["Departures from study.toml", "Step yield was so."]
+    assert rows[5:] == [
+        ["Result", "Value", "to", "Unit", "Basis"],
+        ["Net P50", 45123.4, None, "MWh/year", "yield"],
+        ["80\u00a0% interval", 6.9, 7.3, "m/s", "@blocks"],
+        ["Recovery", 0.98, None, "–", "of 61\u202f344"],
+    ]
+    assert book[RESULTS].freeze_panes == "A7"
+    assert book[RESULTS]["B9"].number_format == "0.0 %"
+    assert book[RESULTS]["A4"].fill.fgColor.rgb.lower() == "00fbe9d7"
+
+
+def test_an_empty_table_is_left_out_and_the_contents_say_so(tmp_path):
+    empty = pd.DataFrame({"file": pd.Series(dtype=str)})
+    book = openpyxl.load_workbook(write_tables(tmp_path / "t.xlsx", {"measure.set_aside": empty}))
+    assert book.sheetnames == [CONTENTS]
+    assert _rows(book[CONTENTS])[1][:3] == [None, "measure: set aside (empty, left out)", 0]
+
+
+def test_times_and_numbers_written_as_text_are_times_and_numbers(tmp_path):
+    frame = pd.DataFrame(
+        {
+            "from": ["2023-01-16 21:00", "2023-01-17 00:10"],
+            "when": ["", "2024-01-22"],
+            "threshold": ["274.15", "-0.5"],
+            "serial": ["007", "012"],
+            "odd": ["2023-02-30", "2023-03-01"],
+            "mixed": ["1", "one"],
+        }
+    )
+    sheet = openpyxl.load_workbook(write_tables(tmp_path / "t.xlsx", {"t": frame}))["t"]
+    assert _rows(sheet)[1:] == [
+        [dt.datetime(2023, 1, 16, 21), None, 274.15, "007", "2023-02-30", "1"],
+        [
+            dt.datetime(2023, 1, 17, 0, 10), dt.datetime(2024, 1, 22), -0.5, "012",
+            "2023-03-01", "one",
+        ],
+    ]  # fmt: skip
+    assert sheet["A2"].number_format == "yyyy-mm-dd hh:mm"
+    assert sheet["B3"].number_format == "yyyy-mm-dd"
 
 
 def test_a_table_keeps_its_numbers_index_and_units(book):
     assert _rows(book["Monthly"]) == [
-        ["month", "wind_speed [m/s]", "count", "note"],
+        ["month", "wind speed [m/s]", "count", "note"],
         ["May", 7.123, 4320, "=1+1"],
         ["June", None, 4464, None],
     ]
@@ -86,12 +138,12 @@ def test_text_is_never_a_formula(text, tmp_path):
 
 
 def test_a_second_run_gives_the_same_bytes(tmp_path):
-    one = write_tables(tmp_path / "a.xlsx", _tables(), RESULTS).read_bytes()
+    one = write_tables(tmp_path / "a.xlsx", _tables(), FIGURES).read_bytes()
     later = Row(now=lambda tz=None: dt.datetime(2040, 1, 1, tzinfo=tz))
     with pytest.MonkeyPatch.context() as patch:
         clock = Row(datetime=later, timezone=dt.timezone)
         patch.setattr("openpyxl.writer.excel.datetime", clock)
-        two = write_tables(tmp_path / "b.xlsx", _tables(), RESULTS).read_bytes()
+        two = write_tables(tmp_path / "b.xlsx", _tables(), FIGURES).read_bytes()
     assert one == two
     with zipfile.ZipFile(tmp_path / "b.xlsx") as parts:
         core = parts.read("docProps/core.xml").decode()
@@ -108,7 +160,7 @@ def test_results_as_in_the_result_file(tmp_path):
         "explained": {"value": 0.9, "unit": "1", "basis": "measured"},
     }
     path = write_tables(tmp_path / "t.xlsx", {}, results)
-    rows = _rows(openpyxl.load_workbook(path)[CONTENTS])
+    rows = _rows(openpyxl.load_workbook(path)[RESULTS])
     assert rows[1:6] == [
         ["hub.mean_speed_m_s", 7.5, None, "m/s", None],
         ["hub.weibull_k", 2.1, None, "–", None],

@@ -75,7 +75,48 @@ def test_an_index_that_says_something_is_a_column():
 def test_formats_by_unit_text_and_function():
     frame = pd.DataFrame({"energy": [1234.5], "share": [0.034], "other": [2.0]})
     formats = {"energy": "MWh", "share": ".1%", "other": lambda value: f"<{value}>"}
-    assert Table(frame, formats=formats).cells == [["1\u202f234", "3.4%", "<2.0>"]]
+    assert Table(frame, formats=formats).cells == [["1\u202f234", "3.4\u00a0%", "<2.0>"]]
+
+
+def test_shares_and_signs_by_format():
+    frame = pd.DataFrame({"change": [0.0, -1e-12, 0.0074, -0.00002], "lag": [-0.001, 0, 1, -2.5]})
+    cells = Table(frame, formats={"change": "+.2%", "lag": "+.2f"}).cells
+    assert [row[0] for row in cells] == [
+        "0.00\u00a0%", "0.00\u00a0%", "+0.74\u00a0%", "−0.0020\u00a0%",
+    ]  # fmt: skip
+    assert [row[1] for row in cells] == ["0.00", "0.00", "+1.00", "−2.50"]
+
+
+def test_names_of_the_study_file_are_words_in_some_columns():
+    frame = pd.DataFrame(
+        {"group": ["plant_performance"], "of": ["wind_speed"], "channel": ["speed_80"]}
+    )
+    assert Table(frame).cells == [["plant performance", "wind speed", "speed_80"]]
+
+
+def test_truth_years_and_times():
+    times = pd.to_datetime(["2009-11-01", "2010-02-01"], utc=True)
+    frame = pd.DataFrame({"chosen": [True, False], "year": [2004, 2005], "date": times})
+    assert Table(frame).cells == [["yes", "2004", "2009-11-01"], ["no", "2005", "2010-02-01"]]
+    later = frame.assign(date=times + pd.Timedelta("9h"))
+    assert Table(later).cells[0][2] == "2009-11-01 09:00"
+
+
+def test_sentences_in_a_table_have_its_style():
+    row = _row(label="Its 80% range", basis="intervals out of 61,344")
+    assert results_table([row]).cells[0][::3] == [
+        "Its 80\u00a0% range", "intervals out of 61\u202f344",
+    ]  # fmt: skip
+    frame = pd.DataFrame({"reason": ["drifts by -9.9% a year"], "missing": ["-999, --"]})
+    assert Table(frame).cells == [["drifts by −9.9\u00a0% a year", "-999, --"]]
+
+
+def test_long_texts_are_whole_and_get_room_beside_many_numbers():
+    text = "a reason that is far longer than any column of numbers " * 4
+    html = Table([{"reason": text, **{f"n{i}": i for i in range(9)}}]).to_html()
+    assert text.strip() in html
+    assert '<td class="line">' in html
+    assert '<table class="site-table many">' in html
 
 
 def test_a_format_for_a_column_that_is_not_there_is_refused():

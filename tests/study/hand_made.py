@@ -31,7 +31,11 @@ def save_measured(
         "measured.mean_speed_m_s": 8.0,
         "measured.recovery": 1.0,
     }
-    save_artifact(open_study(folder), Outcome("measure", rows(values), {"record": record}))
+    main = pd.DataFrame(
+        {"wind_speed": record["speed_60"], "wind_direction": 0.0, "basis": "speed_60"}
+    )
+    tables = {"record": record, "main": main}
+    save_artifact(open_study(folder), Outcome("measure", rows(values), tables))
 
 
 def save_long_term(

@@ -17,7 +17,7 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
-from windkit.study.checks import CHECKS, MASKING_RULES, CheckSettings, range_spans, without
+from windkit.study.checks import CHECKS, MASKING_RULES, CheckSettings, Given, range_spans, without
 from windkit.study.reading import Reading, read_station
 from windkit.study.stations import StationSettings
 
@@ -307,7 +307,7 @@ def outcome(fault: str, rule: str, lay: Fault) -> Outcome:
         spans = impossible
     else:
         rest = without(damaged, impossible)
-        spans = CHECKS[rule](rest, settings, references, ELEVATION)
+        spans = CHECKS[rule](rest, settings, Given(references, ELEVATION))
     found = hit = alarms = quiet = 0
     names = CUPS if "*" in seeded else tuple(frame.columns)
     for name in names:

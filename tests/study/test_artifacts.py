@@ -104,8 +104,8 @@ def test_a_decision_makes_stale_what_stands_on_it_and_nothing_else(finished, old
     ("name", "stale"),
     [
         ("data/mast.csv", {"measure", "long_term", *AFTER_YIELD}),
-        ("data/far_skerry.csv", {"long_term", *AFTER_YIELD}),
-        ("data/curve.csv", {"screen", *AFTER_YIELD}),
+        ("data/far_skerry.csv", {"measure", "long_term", *AFTER_YIELD}),
+        ("data/curve.csv", {"screen", "measure", "long_term", *AFTER_YIELD}),
         ("ledger.csv", {"measure", "long_term", *AFTER_YIELD}),
     ],
 )
@@ -153,7 +153,7 @@ def test_an_override_is_part_of_the_artifact_and_no_staleness(finished):
     assert loaded.overrides == {"turbine.hub_height_m": 100.0}
     edit(finished / "study.toml", "hub_height_m = 90.0", "hub_height_m = 95.0")
     load_artifact(open_study(finished), "yield")  # its own departure outranks the file
-    edit(finished / "study.toml", "cut_out_m_s = 25.0", "cut_out_m_s = 24.0")
+    edit(finished / "study.toml", "rotor_diameter_m = ", "rotor_diameter_m = 1")
     with pytest.raises(StudyError, match=r"study\.toml \[turbine\]"):
         load_artifact(open_study(finished), "yield")
 

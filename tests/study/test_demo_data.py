@@ -89,19 +89,19 @@ def test_packed_files_carry_no_time_and_stay_small():
 
 
 def test_curve_follows_its_closed_form_below_the_knee(curve):
-    # By hand: 0.455 (1 - (2.55/8)^4) of the stream through 112 m; the knee takes less than 0.1 %.
-    stream = 0.5 * 1.225 * np.pi * 56.0**2 * np.array([4.0, 6.0, 8.0]) ** 3
+    # By hand: 0.455 (1 - (2.55/8)^4) of the stream through 107 m; the knee takes less than 0.1 %.
+    stream = 0.5 * 1.225 * np.pi * 53.5**2 * np.array([4.0, 6.0, 8.0]) ** 3
     coefficient = 0.455 * (1 - (2.55 / np.array([4.0, 6.0, 8.0])) ** 4)
     np.testing.assert_allclose(power_at(curve, [4.0, 6.0, 8.0]), coefficient * stream, rtol=4e-3)
-    assert curve.rated_power == 3e6
-    peak = betz_check(curve, 112.0)
+    assert curve.rated_power == 2.9e6
+    peak = betz_check(curve, 107.0)
     assert 0.44 < peak.power_coefficient < 0.46
 
 
 def test_thrust_and_power_coefficients_agree_with_momentum():
     # PWR-1: no rotor gives more than 16/27 nor, by momentum theory, less thrust than its power.
     table = pd.read_csv(DEMO / "data" / "curve.csv")
-    stream = 0.5 * 1.225 * np.pi * 56.0**2 * table["wind_speed_m_s"] ** 3 / 1000
+    stream = 0.5 * 1.225 * np.pi * 53.5**2 * table["wind_speed_m_s"] ** 3 / 1000
     assert (table["power_kw"] / stream < table["thrust_coefficient"]).all()
     assert table["thrust_coefficient"].between(0.0, 8 / 9).all()
 

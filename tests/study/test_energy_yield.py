@@ -201,7 +201,8 @@ def test_damp_air_is_lighter(small):
 
 
 def test_a_hub_far_above_the_mast_is_told(sea_level):
-    assert yielded(sea_level, BRISK, hub_height_m=90.0).outcome.warnings == []
+    told = yielded(sea_level, BRISK, hub_height_m=90.0).outcome.warnings
+    assert not any("times as high" in warning for warning in told)
     told = yielded(sea_level, BRISK, hub_height_m=95.0).outcome.warnings
     assert any("1.58 times as high" in warning for warning in told)
 

@@ -59,32 +59,32 @@ def test_airports_each_as_site_from_every_three_months(capsys):
 
 
 def test_simulated_sites_with_breaks(capsys):
-    # A short run of `make calibrate`; with 40 sites a coverage of 80 % has a standard error of 6 %.
-    found = summary(run("breaks everywhere", 40, first_seed=5000))
+    # A short run of `make calibrate`; with 30 sites a coverage of 80 % has a standard error of 7 %.
+    found = summary(run("breaks everywhere", 30, first_seed=5000))
     with capsys.disabled():
-        print("\nbreaks everywhere, 40 sites: ", {k: round(v, 2) for k, v in found.items()})
-    assert 0.65 <= found["held_80"] <= 0.95
-    assert found["held_95"] >= 0.87
+        print("\nbreaks everywhere, 30 sites: ", {k: round(v, 2) for k, v in found.items()})
+    assert 0.6 <= found["held_80"] <= 0.95
+    assert found["held_95"] >= 0.83
     assert found["rms_%"] < found["single_%"]
     assert found["rms_%"] < found["raw_%"]
     assert found["uniform_p"] > 0.01
 
 
 def test_simulated_sites_that_do_not_change_among_references_that_do(capsys):
-    found = summary(run("breaks in references only", 30, first_seed=7000))
+    found = summary(run("breaks in references only", 20, first_seed=7000))
     with capsys.disabled():
-        print("\nbreaks in references only, 30: ", {k: round(v, 2) for k, v in found.items()})
-    assert found["held_80"] >= 0.62
+        print("\nbreaks in references only, 20 sites: ", {k: round(v, 2) for k, v in found.items()})
+    assert found["held_80"] >= 0.6
     # The mark: at least 25 % below the best single reference by the variance ratio.
     assert found["rms_%"] < 0.75 * found["single_%"]
 
 
 def test_simulated_clean_sites_are_not_made_to_look_worse(capsys):
-    found = summary(run("clean", 30, first_seed=6000))
+    found = summary(run("clean", 20, first_seed=6000))
     with capsys.disabled():
-        print("\nclean, 30 sites: ", {k: round(v, 2) for k, v in found.items()})
-    # 30 sites: their rms error has a standard error of 13 %; the long run holds it to 1.25
-    assert found["width_ratio"] < 1.6
+        print("\nclean, 20 sites: ", {k: round(v, 2) for k, v in found.items()})
+    # 20 sites: their rms error has a standard error of 16 %; the long run holds it to 1.25
+    assert found["width_ratio"] < 1.8
     assert found["rms_%"] < 3.5
 
 
@@ -114,6 +114,10 @@ def test_result_has_every_part_of_the_answer(study, corrected):
     assert corrected.windows["mean_speed"].iloc[-1] == pytest.approx(corrected.mean_speed)
     assert corrected.series["wind_speed"].mean() == pytest.approx(corrected.mean_speed)
     assert "doing nothing" in corrected.methods.index
+    by_reference = corrected.methods_by_reference
+    assert by_reference.index.get_level_values("reference").nunique() == 3
+    best = by_reference.loc[corrected.references.index[0]]
+    pd.testing.assert_frame_equal(best, corrected.methods)
 
 
 def test_more_months_are_worth_something():

@@ -263,6 +263,11 @@ def test_a_gap_counts_in_the_expected_intervals(tmp_path: Path):
     write(tmp_path, *ROWS, "2026-01-01 02:00,1,1,1", "2026-01-01 02:10,1,1,1")
     reading = read_station(settings(), tmp_path)
     assert (reading.rows_kept, reading.expected_count) == (5, 13)
+    absent = reading.absent
+    assert absent["count"].tolist() == [8]
+    # Row 00:30 ends at 23:30 UTC; row 02:00 begins at 00:50 UTC.
+    assert absent["from"].iloc[0] == pd.Timestamp("2025-12-31 23:30", tz="UTC")
+    assert absent["to"].iloc[0] == pd.Timestamp("2026-01-01 00:50", tz="UTC")
 
 
 @pytest.mark.parametrize("stamp", ["2026-02-30 00:10", "yesterday", "", "05/01/2026 00:10"])

@@ -10,6 +10,7 @@ from station_examples import channel, reading_of, settings
 
 from windkit.study.checks import CheckSettings
 from windkit.study.errors import StudyError
+from windkit.study.hourly import hourly_weighted_directions
 from windkit.study.ledger import decision_row, read_ledger, write_ledger
 from windkit.study.reading import Reading
 from windkit.study.record import build_record, replay
@@ -87,6 +88,40 @@ def test_a_check_that_does_not_mask_only_lists_suspects():
     record = build_record(mast(), CheckSettings(masking_rules=["range"]))
     assert record.counts.set_index("channel").loc["direction_78", "masked"] == 0
     assert "stuck" in set(record.suspects["rule"])
+
+
+def test_a_suspect_that_a_person_decided_on_waits_no_more():
+    few = CheckSettings(masking_rules=["range"])
+    waiting = build_record(mast(), few).suspects
+    vane = waiting[(waiting["rule"] == "stuck") & (waiting["channel"] == "direction_78")]
+    assert len(vane) == 1
+    keep = decision_row(
+        channel="direction_78",
+        start=vane["from"].iloc[0],
+        stop=vane["to"].iloc[0],
+        rule="stuck",
+        reason="seen to move",
+        decision="rejected",
+        who="E. Marsh",
+        when="2026-02-03",
+    )
+    left = build_record(mast(), few, keep).suspects
+    assert len(left) == len(waiting) - 1
+    assert "direction_78" not in set(left.loc[left["rule"] == "stuck", "channel"])
+
+
+def test_the_weighted_direction_is_that_of_the_mean_vector():
+    columns = {
+        "speed_80": np.array([1.0, 1.0, 1.0, 1.0, 1.0, 10.0]),
+        "direction_78": np.array([0.0, 0.0, 0.0, 0.0, 0.0, 90.0]),
+        "temperature_5": np.full(6, 280.0),
+    }
+    record = build_record(reading_of(columns, settings()), FEW)
+    # Occurrence: five of six from north. Transport: 10 m/s from east against 5 m/s from north.
+    plain = record.hourly()["direction_78"].iloc[0]
+    weighted = hourly_weighted_directions(record.masked, record.settings)["direction_78"].iloc[0]
+    assert plain == pytest.approx(np.degrees(np.arctan2(1, 5)))
+    assert weighted == pytest.approx(np.degrees(np.arctan2(10, 5)))
 
 
 def test_a_calm_has_no_direction_and_counts():

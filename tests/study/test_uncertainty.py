@@ -91,7 +91,7 @@ def test_the_parts_add_up_to_the_ten_year_variance(small):
         sensitivity=1.8,
     )
     total = 0.002896 + 0.0011664
-    shares = found.parts.set_index("name")["share_of_variance"]
+    shares = found.parts.set_index("name")["share_of_ten_year_variance"]
     assert shares.sum() == pytest.approx(1.0)
     assert shares["cause 0"] == pytest.approx(0.0016 / total)
     assert shares["windiness of one year"] == pytest.approx(0.0011664 / total)
@@ -146,7 +146,7 @@ def test_longer_periods_and_lower_probabilities_are_in_order(small):
 def test_no_uncertainty_at_all_leaves_p50(small):
     found = assessed(small)
     assert (found.level_table == 100.0).all().all()
-    assert (found.parts["share_of_variance"] == 0.0).all()
+    assert (found.parts["share_of_ten_year_variance"] == 0.0).all()
     json.dumps([row.value for row in found.outcome.rows], allow_nan=False)
 
 

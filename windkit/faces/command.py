@@ -10,9 +10,12 @@ import argparse
 import ast
 import os
 import secrets
+import shutil
+import signal
+import socket
 import subprocess
 import sys
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -23,6 +26,12 @@ __all__ = ["main"]
 
 EXIT_BAD_INPUT = 2
 EXIT_STOPPED = 130
+
+#: The lab is served to this machine alone.
+LOOPBACK = "127.0.0.1"
+_PORTS_TRIED = 50
+#: How long a server may take to end before it is made to [s].
+_PATIENCE_S = 10.0
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -106,10 +115,10 @@ def _new(chosen: argparse.Namespace) -> int:
     folder = make_study(chosen.folder, demo=chosen.demo)
     print(f"made {chosen.folder}/")
     if chosen.demo:
-        print(f"next: sitestudy run {chosen.folder}")
+        print(f"next: {_own_name()} run {chosen.folder}")
     else:
         print(f"next: put the client's files into {folder.name}/data/, fill in study.toml, then")
-        print(f"      sitestudy run {chosen.folder}")
+        print(f"      {_own_name()} run {chosen.folder}")
     return 0
 
 
@@ -139,18 +148,80 @@ def _lab(chosen: argparse.Namespace) -> int:
     from windkit.study.folder import open_study
 
     study = open_study(chosen.folder)
+    port = free_port(chosen.port)
     # The token goes by the environment, so that it shows in no process list.
     token = secrets.token_urlsafe(24)
     command = [
-        sys.executable, "-m", "jupyterlab", "--ip=127.0.0.1", f"--port={chosen.port}",
-        f"--ServerApp.root_dir={study.folder}",
+        sys.executable, "-m", "jupyterlab", f"--ip={LOOPBACK}", f"--port={port}",
+        "--ServerApp.port_retries=0", f"--ServerApp.root_dir={study.folder}", "--log-level=ERROR",
+        "--LabApp.log_level=ERROR",
     ]  # fmt: skip
     if chosen.no_browser:
         command.append("--no-browser")
     if hasattr(os, "geteuid") and os.geteuid() == 0:
         command.append("--allow-root")
-    print(f"token for this session: {token}", flush=True)
-    return subprocess.call(command, env={**os.environ, "JUPYTER_TOKEN": token})
+    print(f"http://{LOOPBACK}:{port}/lab?token={token}")
+    print("open for as long as this command runs; Ctrl+C ends it", flush=True)
+    return attend(command, {**os.environ, "JUPYTER_TOKEN": token})
+
+
+def free_port(first: int) -> int:
+    """The first free port from `first` on, on the loopback address."""
+    for port in range(first, min(first + _PORTS_TRIED, 65_536)):
+        with socket.socket(socket.AF_INET, socket.SOCK_STREAM) as trial:
+            if os.name == "posix":  # a port that was closed a moment ago is free
+                trial.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)
+            try:
+                trial.bind((LOOPBACK, port))
+            except OSError:
+                continue
+            return port
+    raise StudyError.of(
+        met=f"no port from {first} on is free",
+        rule=f"the lab takes one of {_PORTS_TRIED} ports from --port on",
+        remedy="close another lab, or name another --port between 1024 and 65535",
+    )
+
+
+def attend(command: Sequence[str], environment: Mapping[str, str]) -> int:
+    """Run a server for as long as this process lives, and never leave it behind.
+
+    The server gets a session of its own, so that Ctrl+C reaches it through here only: asked to
+    end it ends, instead of asking back. Whatever ends this process ends the server first.
+
+    Returns
+    -------
+    int
+        The server's exit code, or that of the signal which ended it.
+    """
+    names = ("SIGINT", "SIGTERM", "SIGHUP", "SIGBREAK")
+    heeded = [getattr(signal, name) for name in names if hasattr(signal, name)]
+
+    def stop(number: int, _frame: Any) -> None:
+        raise SystemExit(EXIT_STOPPED if number == signal.SIGINT else 128 + number)
+
+    before = {number: signal.signal(number, stop) for number in heeded}
+    server = None
+    try:
+        server = subprocess.Popen(
+            command, env=dict(environment), stdin=subprocess.DEVNULL, start_new_session=True
+        )
+        return server.wait()
+    except SystemExit as end:
+        return int(end.code or 0)
+    finally:
+        # A second signal must not keep the server from being ended.
+        for number in heeded:
+            signal.signal(number, signal.SIG_IGN)
+        if server is not None and server.poll() is None:
+            server.terminate()
+            try:
+                server.wait(_PATIENCE_S)
+            except subprocess.TimeoutExpired:
+                server.kill()
+                server.wait()
+        for number, handler in before.items():
+            signal.signal(number, handler)
 
 
 def _parameters(settings: Sequence[str]) -> dict[str, dict[str, Any]]:
@@ -173,6 +244,14 @@ def _parameters(settings: Sequence[str]) -> dict[str, dict[str, Any]]:
     return values
 
 
+def _own_name() -> str:
+    """The command as it was called: by its path where its name alone does not find it."""
+    called = Path(sys.argv[0])
+    if called.stem != "sitestudy" or shutil.which("sitestudy") == str(called):
+        return "sitestudy"
+    return _shown(called)
+
+
 def _shown(path: Path) -> str:
     """A path as seen from here, if it lies below; else in full."""
     here = Path.cwd()
@@ -180,18 +259,23 @@ def _shown(path: Path) -> str:
 
 
 class _Progress:
-    """One bar per workbook on stderr."""
+    """One bar per workbook on stderr; one line per workbook where that is no terminal."""
 
     def __init__(self) -> None:
         self._workbook = ""
         self._bar: Any = None
 
     def __call__(self, workbook: str, done: int, total: int) -> None:
+        started = workbook != self._workbook
+        self._workbook = workbook
+        if not sys.stderr.isatty():
+            if started:
+                print(f"running {workbook}, {total} cells", file=sys.stderr, flush=True)
+            return
         from tqdm import tqdm
 
-        if workbook != self._workbook:
+        if started:
             self.close()
-            self._workbook = workbook
             self._bar = tqdm(
                 total=total,
                 desc=f"{workbook:<28}",

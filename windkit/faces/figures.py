@@ -23,10 +23,10 @@ from windkit.faces.figures_energy import (
 )
 from windkit.faces.figures_long_term import method_comparison, scatter_fit, yearly_means
 from windkit.faces.figures_measured import (
-    coverage,
     diurnal_and_monthly,
     pair_ratio_by_direction,
     profile,
+    recovery_map,
     speed_distribution,
     turbulence_by_speed,
 )
@@ -34,7 +34,6 @@ from windkit.faces.figures_rose import wind_rose
 from windkit.faces.look import save_png, use
 
 __all__ = [
-    "coverage",
     "density_by_month",
     "diurnal_and_monthly",
     "errors_of_height_left_out",
@@ -45,6 +44,7 @@ __all__ = [
     "pair_ratio_by_direction",
     "power_curve",
     "profile",
+    "recovery_map",
     "return_levels",
     "save_png",
     "scatter_fit",

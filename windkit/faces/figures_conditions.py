@@ -23,6 +23,7 @@ from windkit.faces.look import (
     LINE_STYLES,
     MAIN,
     MUTED,
+    PAGE_WIDTH,
     PALE,
     dress,
     in_house_style,
@@ -99,7 +100,7 @@ def errors_of_height_left_out(
     import matplotlib.pyplot as plt
 
     trio = (
-        plt.subplots(1, 3, figsize=(8.0, 3.0), sharey=True, width_ratios=(3, 1.6, 2.4))[1]
+        plt.subplots(1, 3, figsize=(PAGE_WIDTH, 2.9), sharey=True, width_ratios=(3, 1.6, 2.4))[1]
         if ax is None
         else ax
     )
@@ -213,7 +214,7 @@ def turbulence_against_classes(
         Heading.
     """
     V = np.asarray(speed, dtype=float)
-    ax = new_axes(ax, width=6.8, height=4.0)
+    ax = new_axes(ax, height=3.8)
     dress(ax, title=title, x="Wind speed [m/s]", y="Turbulence intensity")
     if V.size == 0:
         return nothing_to_draw(ax, "turbulence is not assessed")
@@ -285,7 +286,7 @@ def return_levels(
         # Reduced variate: a Gumbel distribution is a straight line on it.
         return -np.log(-np.log1p(-1.0 / np.asarray(period, dtype=float)))
 
-    ax = new_axes(ax, width=6.8, height=4.0)
+    ax = new_axes(ax, height=3.8)
     dress(ax, title=title, x="Return period [years]", y="Ten-minute wind speed [m/s]", grid="both")
     if levels.empty:
         return nothing_to_draw(ax, "extreme winds are not assessed")

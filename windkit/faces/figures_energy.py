@@ -33,6 +33,7 @@ from windkit.faces.look import (
     percent_axis,
     thousands_axis,
 )
+from windkit.faces.wording import as_printed, percent_number
 from windkit.kernels.exceedance import exceedance_level
 
 __all__ = [
@@ -45,6 +46,12 @@ __all__ = [
 
 #: Probabilities of exceedance that are marked on the curves [1].
 _MARKED = (0.5, 0.75, 0.9, 0.95, 0.99)
+#: Curves of long periods all but coincide: a wide pale one shows beside a thin one on top of it.
+_APART: tuple[dict[str, Any], ...] = (
+    {"linewidth": 1.8, "linestyle": "-"},
+    {"linewidth": 4.5, "linestyle": "-", "alpha": 0.45},
+    {"linewidth": 1.4, "linestyle": LINE_STYLES[1]},
+)
 #: Tells the second colour apart in grey print.
 _HATCHED: dict[str, Any] = {"hatch": "////", "edgecolor": "white", "linewidth": 0}
 
@@ -148,7 +155,7 @@ def loss_staircase(
             "each loss, not the loss"
         )
     gross, net, last = float(left[0]), float(left[-1]), left.size
-    ax = new_axes(ax, width=6.8, height=1.4 + 0.3 * (last + 1))
+    ax = new_axes(ax, height=1.1 + 0.27 * (last + 1))
     dress(ax, title=title, x=f"Energy [{unit}]", grid="x")
     decimals = _energy_decimals(gross)
     for row, value in ((0, gross), (last, net)):
@@ -157,8 +164,8 @@ def loss_staircase(
     for row in range(1, last):
         lost = float(left[row - 1] - left[row])
         ax.barh(row, lost, left=left[row], height=0.62, color=BAD)
-        share = 100 * lost / left[row - 1] if left[row - 1] else 0.0
-        said = f"−{number_text(lost, decimals)} ({share:.1f} %)"
+        share = lost / left[row - 1] if left[row - 1] else 0.0
+        said = f"−{number_text(lost, decimals)} ({percent_number(share)} %)"
         _beside(ax, said, float(left[row - 1]), row)
     for row, value in enumerate(left):
         # The thread from one step to the next.
@@ -223,7 +230,7 @@ def uncertainty_bars(
     names = [str(labels[index]) for index in order] + list(total or {})
     values = [float(sizes[index]) for index in order] + list((total or {}).values())
     fills = [colours[varies[index]] for index in order] + [INK] * len(total or {})
-    ax = new_axes(ax, width=6.6, height=1.6 + 0.3 * len(names))
+    ax = new_axes(ax, height=1.3 + 0.235 * len(names))
     dress(ax, title=title, x="Standard uncertainty in energy", grid="x")
     rows = np.arange(len(names), dtype=float)
     rows[len(order) :] += 0.5
@@ -234,7 +241,7 @@ def uncertainty_bars(
             bar.set_edgecolor("white")
             bar.set_linewidth(0)
     for row, value in zip(rows, values, strict=True):
-        _beside(ax, f"{100 * value:.1f} %", value, row)
+        _beside(ax, f"{percent_number(value)} %", value, row)
     ax.set_yticks(rows, names)
     ax.invert_yaxis()
     ax.tick_params(axis="y", length=0)
@@ -273,7 +280,7 @@ def exceedance_curves(
         Heading.
     """
     chance = np.concatenate([[0.002, 0.005], np.linspace(0.01, 0.99, 197), [0.995, 0.998]])
-    ax = new_axes(ax, width=6.8, height=4.0)
+    ax = new_axes(ax, height=3.9)
     dress(ax, title=title, x=f"Mean energy [{unit}]", y="Probability of exceeding it", grid="x")
     for level in _MARKED:
         ax.axhline(level, color=FAINT, linewidth=0.7, zorder=0.5)
@@ -281,22 +288,22 @@ def exceedance_curves(
             f"P{100 * level:g}",
             (1.0, level),
             xycoords=("axes fraction", "data"),
-            xytext=(4, 0),
+            xytext=(4, 4 if level == max(_MARKED) else 0),  # P99 and P95 all but touch
             textcoords="offset points",
             va="center",
             fontsize=8,
             color=INK,
         )
     for position, (years, spread) in enumerate(standard_uncertainty.items()):
-        colour = SERIES[position % len(SERIES)]
+        colour = (MAIN, ACCENT, INK, *SERIES[2:])[position % 7]
         name = "1 year" if years == 1 else f"{years:g} years"
         p90 = float(exceedance_level(p50, spread, 0.9))
         ax.plot(
             exceedance_level(p50, spread, chance),
             chance,
             color=colour,
-            linestyle=LINE_STYLES[position % len(LINE_STYLES)],
             label=f"{name}: P90 {number_text(p90, _energy_decimals(p50))}",
+            **_APART[position % len(_APART)],
         )
         ax.plot(
             exceedance_level(p50, spread, np.asarray(_MARKED)),
@@ -312,11 +319,8 @@ def exceedance_curves(
     ax.yaxis.set_major_formatter(percent_axis())
     ax.xaxis.set_major_formatter(thousands_axis(_energy_decimals(p50)))
     ax.xaxis.set_major_locator(MaxNLocator(6))
-    ax.legend(
-        loc="upper right",
-        title=f"P50 {number_text(p50, _energy_decimals(p50))} {unit}",
-        alignment="left",
-    )
+    ax.set_xlabel(f"Mean energy [{unit}], P50 {number_text(p50, _energy_decimals(p50))}")
+    legend_below(ax, 3)
     return ax
 
 
@@ -351,7 +355,7 @@ def tornado(
     down = np.asarray(low, dtype=float)
     up = np.asarray(high, dtype=float)
     order = np.argsort(-np.abs(up - down), kind="stable")
-    ax = new_axes(ax, width=6.8, height=1.7 + 0.34 * len(labels))
+    ax = new_axes(ax, height=1.5 + 0.34 * len(labels))
     dress(ax, title=title, x=f"Answer [{unit}]", grid="x")
     decimals = _energy_decimals(base)
     for row, index in enumerate(order):
@@ -370,7 +374,7 @@ def tornado(
                 fontsize=8,
             )
     ax.axvline(base, color=INK, linewidth=1.0)
-    ax.set_yticks(range(len(order)), [str(labels[index]) for index in order])
+    ax.set_yticks(range(len(order)), [as_printed(str(labels[index])) for index in order])
     ax.invert_yaxis()
     ax.tick_params(axis="y", length=0)
     ax.spines["left"].set_visible(False)

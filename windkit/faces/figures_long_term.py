@@ -8,11 +8,11 @@ Nothing is computed here that the numbers of the study depend on. The measured w
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from numbers import Integral
 from typing import TYPE_CHECKING
 
 import numpy as np
 from matplotlib.axes import Axes
-from matplotlib.ticker import MaxNLocator
 from numpy.typing import ArrayLike
 
 from windkit.faces.look import (
@@ -43,6 +43,8 @@ __all__ = [
     "yearly_means",
 ]
 
+#: Years that are named below the axis at most.
+_YEARS_NAMED = 10
 #: Points above which a scatter is drawn as a density, because single dots would hide it.
 _DENSITY_FROM = 3000
 
@@ -74,7 +76,7 @@ def scatter_fit(
     there = np.isfinite(x) & np.isfinite(y)
     x, y = x[there], y[there]
     top = 1.05 * float(max(x.max(initial=1.0), y.max(initial=1.0)))
-    ax = new_axes(ax, width=5.0, height=4.7)
+    ax = new_axes(ax, width=4.9, height=4.5)
     dress(ax, title=title, x="Reference wind speed [m/s]", y="Site wind speed [m/s]", grid="both")
     if x.size > _DENSITY_FROM:
         ax.hexbin(
@@ -116,7 +118,8 @@ def yearly_means(
     means : array_like
         Mean speeds [m/s].
     campaign_years : two floats, optional
-        First and last year the site was measured in, shaded.
+        When the site was measured, shaded exactly: the year with its elapsed part, so 2022.83 is
+        the end of October 2022. A whole number of type int means that calendar year, all of it.
     long_term_mean : float, optional
         Mean over the whole record [m/s].
     ax : Axes, optional
@@ -125,15 +128,16 @@ def yearly_means(
         Heading.
     """
     shown = np.asarray(years, dtype=float)
-    ax = new_axes(ax, width=6.8, height=3.2)
+    ax = new_axes(ax, height=3.0)
     dress(ax, title=title, x="Year", y="Mean wind speed [m/s]")
     if shown.size == 0:
         return nothing_to_draw(ax, "no whole calendar year in the record")
     if campaign_years is not None:
         first, last = min(campaign_years), max(campaign_years)
         ax.axvspan(
-            first - 0.5, last + 0.5, color=GRID, zorder=0, linewidth=0, label="measured at the site"
-        )
+            float(first), float(last) + isinstance(last, Integral), color=GRID, zorder=0,
+            linewidth=0, label="measured at the site",
+        )  # fmt: skip
     if long_term_mean is not None:
         ax.axhline(
             long_term_mean,
@@ -142,9 +146,15 @@ def yearly_means(
             linewidth=1.3,
             label=f"mean of the record, {long_term_mean:.2f} m/s",
         )
-    ax.plot(shown, means, color=MAIN, marker="o", markersize=4.5, label="yearly mean")
-    ax.xaxis.set_major_locator(MaxNLocator(integer=True))
-    ax.set_xlim(shown.min() - 0.7, shown.max() + 0.7)
+    # A calendar year reaches from its number to the next; its mean stands in the middle.
+    ax.plot(shown + 0.5, means, color=MAIN, marker="o", markersize=4.5, label="yearly mean")
+    every = max(1, int(np.ceil((shown.max() - shown.min() + 1) / _YEARS_NAMED)))
+    named = np.arange(shown.max(), shown.min() - 1, -every)[::-1]
+    ax.set_xticks(named + 0.5, [f"{year:.0f}" for year in named])
+    ax.set_xticks(np.arange(shown.min(), shown.max() + 2), minor=True)
+    ax.tick_params(axis="x", which="major", length=0)
+    ax.tick_params(axis="x", which="minor", length=3.5, color=MUTED)
+    ax.set_xlim(shown.min() - 0.2, shown.max() + 1.2)
     level_room(ax)
     legend_below(ax, 3)
     return ax
@@ -175,7 +185,7 @@ def method_comparison(
         Heading.
     """
     names = [str(name) for name in methods["method"]]
-    ax = new_axes(ax, width=6.4, height=1.3 + 0.36 * len(names))
+    ax = new_axes(ax, height=1.2 + 0.34 * len(names))
     dress(ax, title=title, x=label, grid="x")
     for position, (mean, low, high) in enumerate(
         methods[["mean", "low", "high"]].to_numpy(dtype=float)

@@ -8,6 +8,7 @@ all of them from `windkit.faces.figures`.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
@@ -23,6 +24,7 @@ from windkit.faces.look import (
     LINE_STYLES,
     MAIN,
     MUTED,
+    PAGE_WIDTH,
     SERIES,
     dress,
     in_house_style,
@@ -41,21 +43,25 @@ if TYPE_CHECKING:
     import pandas as pd
 
 __all__ = [
-    "coverage",
     "diurnal_and_monthly",
     "pair_ratio_by_direction",
     "profile",
+    "recovery_map",
     "speed_distribution",
     "turbulence_by_speed",
 ]
 
 _WIND_SPEED = "Wind speed [m/s]"
 _DIRECTION = "Wind direction, from [°]"
+#: So many months have room for their shares written level.
+_MONTHS_ABREAST = 10
+#: Narrowest column of the recovery map [inch].
+_NARROWEST_MONTH = 0.14
 _MONTHS = ("Jan", "Feb", "Mar", "Apr", "May", "Jun", "Jul", "Aug", "Sep", "Oct", "Nov", "Dec")
 
 
 @in_house_style
-def coverage(
+def recovery_map(
     recovery: pd.DataFrame, *, ax: Axes | None = None, title: str = "Data recovery by month"
 ) -> Axes:
     """Calendar of what each channel delivered.
@@ -73,11 +79,12 @@ def coverage(
     months = [_month_text(month) for month in recovery.index]
     channels = [str(column) for column in recovery.columns]
     shares = recovery.to_numpy(dtype=float).T
-    small = len(months) > 18
+    # On end, names and shares of many months stand beside each other without touching.
+    on_end = len(months) > _MONTHS_ABREAST
     ax = new_axes(
         ax,
-        width=max(4.5, 1.9 + (0.27 if small else 0.44) * len(months)),
-        height=1.4 + 0.32 * len(channels),
+        width=max(PAGE_WIDTH, 1.6 + _NARROWEST_MONTH * len(months)),
+        height=1.5 + 0.3 * len(channels),
     )
     dress(ax, title=title, grid=None)
     ax.pcolormesh(
@@ -97,16 +104,19 @@ def coverage(
             "–" if np.isnan(share) else _floor_percent(share),
             ha="center",
             va="center",
-            fontsize=6.5 if small else 7.5,
+            fontsize=7.5,
+            rotation=90 if on_end else 0,
             color=INK,
         )
-    ax.set_xticks(np.arange(len(months)) + 0.5, months, rotation=90 if small else 0)
+    if on_end:
+        months = [month.replace("\n", " ") for month in months]
+    ax.set_xticks(np.arange(len(months)) + 0.5, months, rotation=90 if on_end else 0)
     ax.set_yticks(np.arange(len(channels)) + 0.5, channels)
     ax.invert_yaxis()
     ax.tick_params(length=0)
     for spine in ax.spines.values():
         spine.set_visible(False)
-    ax.set_xlabel("Valid values, % of those due (rounded down); – where nothing was due")
+    ax.set_xlabel("Valid values, % of those due (rounded down)\n– where nothing was due")
     return ax
 
 
@@ -117,6 +127,7 @@ def speed_distribution(
     weibull_scale: float | None = None,
     weibull_shape: float | None = None,
     *,
+    label: str = "record",
     ax: Axes | None = None,
     title: str = "Distribution of wind speed",
 ) -> Axes:
@@ -131,6 +142,8 @@ def speed_distribution(
         in width.
     weibull_scale, weibull_shape : float, optional
         Scale A [m/s] and shape k [1].
+    label : str
+        What the bars are of, such as the campaign or the long term.
     ax : Axes, optional
         Where to draw.
     title : str
@@ -148,7 +161,7 @@ def speed_distribution(
         color=FAINT,
         edgecolor="white",
         linewidth=0.8,
-        label="measured or long-term record",
+        label=label,
     )
     if weibull_scale is not None and weibull_shape is not None:
         speeds = np.linspace(0.0, edges[-1], 400)
@@ -244,7 +257,7 @@ def profile(
     # Least squares in logarithms goes through the mean of the logarithms.
     anchor = np.exp(np.log(z).mean()), np.exp(np.log(v).mean())
     heights = np.linspace(0.05 * top, top, 200)
-    ax = new_axes(ax, width=4.4, height=4.4)
+    ax = new_axes(ax, width=4.4, height=4.2)
     dress(ax, title=title, x="Mean wind speed [m/s]", y="Height above ground [m]", grid="both")
     line = power_law(anchor[1], anchor[0], heights, shear_exponent)
     ax.plot(line, heights, color=MUTED, label=f"power law, exponent {shear_exponent:.3f}")
@@ -265,7 +278,7 @@ def profile(
             label=f"hub height {hub_height:g} m: {at_hub:.2f} m/s",
         )
     ax.set_ylim(0.0, top)
-    ax.legend(loc="upper left")
+    legend_below(ax, 1)
     return ax
 
 
@@ -292,7 +305,7 @@ def diurnal_and_monthly(
     """
     import matplotlib.pyplot as plt
 
-    pair = plt.subplots(1, 2, figsize=(7.6, 3.3), sharey=True)[1] if ax is None else ax
+    pair = plt.subplots(1, 2, figsize=(PAGE_WIDTH, 3.1), sharey=True)[1] if ax is None else ax
     day, year = pair[0], pair[1]
     dress(day, title="By hour of the day", x=f"Hour, {hours_in}", y="Mean wind speed [m/s]")
     dress(year, title="By month", x="Month")
@@ -337,7 +350,7 @@ def pair_ratio_by_direction(
         Heading.
     """
     values = np.asarray(ratio, dtype=float)
-    ax = new_axes(ax, width=6.8)
+    ax = new_axes(ax)
     dress(ax, title=title, x=_DIRECTION, y=label)
     if values.size == 0:
         return nothing_to_draw(ax, "one sensor only at this height")
@@ -367,6 +380,8 @@ def _floor_percent(share: float) -> str:
 
 
 def _month_text(month: Any) -> str:
+    if written := re.fullmatch(r"(\d{4})-(\d\d)", str(month)):
+        return f"{_MONTHS[int(written[2]) - 1]}\n{written[1][2:]}"
     if hasattr(month, "year") and hasattr(month, "month"):
         return f"{_MONTHS[month.month - 1]}\n{month.year % 100:02d}"
     return str(month)

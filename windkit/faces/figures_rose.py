@@ -25,6 +25,7 @@ from windkit.faces.look import (
     in_house_style,
     number_text,
 )
+from windkit.faces.wording import percent_number
 
 __all__ = [
     "ROSE_STEPS",
@@ -112,9 +113,9 @@ def wind_rose(
     _dress_rose(ax, total, calm_threshold)
     said = [f"{number_text(total)} records"]
     if calm_share is not None:
-        said.append(f"calm {100 * calm_share:.1f} %")
+        said.append(f"calm {percent_number(calm_share)} %")
     if undirected_share is not None:
-        said.append(f"no direction {100 * undirected_share:.1f} %")
+        said.append(f"no direction {percent_number(undirected_share)} %")
     # Centred on the rose: a title at the left of a round figure looks adrift.
     ax.set_title(title, loc="center", pad=16)
     ax.text(0.5, -0.13, ", ".join(said), transform=ax.transAxes, ha="center", va="top", color=MUTED)
@@ -128,7 +129,7 @@ def _rose_axes(ax: Axes | None) -> Axes:
     if isinstance(ax, windrose.WindroseAxes):
         return ax
     if ax is None:
-        figure = plt.figure(figsize=(5.4, 4.4))
+        figure = plt.figure(figsize=(5.2, 4.0))
         return figure.add_subplot(projection="windrose")
     whole, place = ax.get_figure(), ax.get_subplotspec()
     if whole is None or place is None:
@@ -146,7 +147,7 @@ def _dress_rose(ax: Any, total: int, calm_threshold: float) -> None:
         rings * total,
         [f"{100 * ring:g} %" for ring in rings],
         angle=ax.radii_angle,
-        fontsize=7.5,
+        fontsize=8,
         color=INK,
     )
     for label in ax.get_yticklabels():

@@ -15,7 +15,8 @@ from typing import Any
 from windkit.faces.report import Cover, versions_in_use, write_report
 from windkit.faces.spreadsheet import write_tables
 from windkit.faces.tables import results_table
-from windkit.faces.views import exceedance_view
+from windkit.faces.views import exceedance_view, setting_text
+from windkit.faces.wording import as_printed, number_text
 from windkit.study.artifacts import Artifact, Outcome, swap_folder
 from windkit.study.errors import StudyError
 from windkit.study.folder import Study
@@ -56,6 +57,7 @@ _SUMMARY_SENTENCES = (
 #: Tables of the artifacts that are too long for a spreadsheet; they stay in results/ as Parquet.
 _LEFT_OUT = {
     ("measure", "record"),
+    ("measure", "main"),
     ("long_term", "series"),
     ("yield", "hub_series"),
     ("yield", "air_temperature"),
@@ -104,11 +106,17 @@ def build_handover(study: Study) -> Handover:
     for file in workbooks:
         shutil.copyfile(file, part / "workbooks" / file.name)
     (part / "results.json").write_text(results_text(results), encoding="utf-8")
-    write_tables(part / "tables.xlsx", _tables(artifacts), results)
+    write_tables(
+        part / "tables.xlsx",
+        _tables(artifacts),
+        [row for artifact in artifacts.values() for row in artifact.rows],
+        title=study.settings.study.title,
+        departures=_departure_sentences(results["departures"]),
+    )
     try:
         write_report(
             part / "report.html",
-            cover=_cover(study),
+            cover=_cover(study, artifacts, results["departures"]),
             notebooks=workbooks,
             headline=exceedance_view(artifacts["uncertainty"]),
             summary_html=_summary(artifacts),
@@ -126,14 +134,19 @@ def build_handover(study: Study) -> Handover:
     return Handover(study.handover, study.handover / "report.html", results)
 
 
-def _cover(study: Study) -> Cover:
+def _cover(
+    study: Study, artifacts: dict[str, Outcome], departures: dict[str, dict[str, Any]]
+) -> Cover:
     settings, identity = study.settings, study.settings.study
     site, turbine = settings.site, settings.turbine
+    # The energy on the cover is that of the hub height it was computed for.
+    hub_height = departures.get("yield", {}).get("turbine.hub_height_m", turbine.hub_height_m)
+    warnings = [warning for artifact in artifacts.values() for warning in artifact.warnings]
     facts = {
         "Country": site.country,
-        "Mast": f"{settings.mast.name}, {site.latitude_deg:.4f}° N, {site.longitude_deg:.4f}° E, "
-        f"{site.elevation_m:g} m above the sea",
-        "Turbines": f"{len(settings.layout)} × {turbine.name}, hub at {turbine.hub_height_m:g} m",
+        "Mast": f"{settings.mast.name}, {_angle(site.latitude_deg, 'N', 'S')}, "
+        f"{_angle(site.longitude_deg, 'E', 'W')}, {number_text(site.elevation_m)} m above the sea",
+        "Turbines": f"{len(settings.layout)} × {turbine.name}, hub at {hub_height:g} m",
     }
     return Cover(
         title=identity.title,
@@ -144,21 +157,36 @@ def _cover(study: Study) -> Cover:
         issue_date=identity.issue_date,
         reason_for_revision=identity.reason_for_revision,
         facts={name: text for name, text in facts.items() if text},
+        mind=[as_printed(said) for said in [*_departure_sentences(departures), *warnings]],
     )
 
 
+def _angle(degrees: float, positive: str, negative: str) -> str:
+    """A coordinate with the letter of its half of the globe instead of a sign."""
+    return f"{abs(degrees):.4f}° {positive if degrees >= 0 else negative}"
+
+
+def _departure_sentences(departures: dict[str, dict[str, Any]]) -> list[str]:
+    """What was run with other values than `study.toml` holds."""
+    return [
+        f"Step {step} was run with {key} = {setting_text(value)} instead of the value in "
+        f"study.toml."
+        for step, values in departures.items()
+        for key, value in values.items()
+    ]
+
+
 def _summary(artifacts: dict[str, Outcome]) -> str:
-    """The figures a reader looks for first, what was found, and every warning."""
+    """The figures a reader looks for first, and what was found."""
     rows = [
         row for artifact in artifacts.values() for row in artifact.rows if row.key in _SUMMARY_KEYS
     ]
     found = "".join(
-        f"<p>{escape(artifacts[step].said[subject])}</p>" for step, subject in _SUMMARY_SENTENCES
+        f"<p>{escape(as_printed(artifacts[step].said[subject]))}</p>"
+        for step, subject in _SUMMARY_SENTENCES
     )
-    warnings = [warning for artifact in artifacts.values() for warning in artifact.warnings]
-    mind = "".join(f"<li>{escape(warning)}</li>" for warning in warnings)
     table = results_table(rows, caption="Figures of merit")._repr_html_()
-    return found + table + (f"<h3>What a reviewer should mind</h3><ul>{mind}</ul>" if mind else "")
+    return f"<h2>Results</h2>{found}{table}"
 
 
 def _inputs(artifacts: dict[str, Outcome]) -> dict[str, str]:

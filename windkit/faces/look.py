@@ -17,6 +17,8 @@ from typing import TYPE_CHECKING, Any, TypeVar
 
 from cycler import cycler
 
+from windkit.faces.wording import number_text
+
 # matplotlib itself is loaded where it is used: tables need the colours without its weight.
 if TYPE_CHECKING:
     from matplotlib.artist import Artist
@@ -35,6 +37,7 @@ __all__ = [
     "LINE_STYLES",
     "MAIN",
     "MUTED",
+    "PAGE_WIDTH",
     "PALE",
     "SERIES",
     "SETTINGS",
@@ -80,6 +83,9 @@ LINE_STYLES: tuple[Any, ...] = ("-", (0, (6, 2)), (0, (1.5, 1.5)), (0, (6, 2, 1.
 
 #: Dots per inch of a figure on a screen or in the report.
 DPI = 110
+#: Widest figure [inch]. It fits between the margins of an A4 page, so no figure is shrunk in
+#: print and its letters stay as large as the text around it.
+PAGE_WIDTH = 5.75
 
 #: From the palest to the darkest step of a quantity that only grows.
 _SEQUENCE = ("#f1f3ee", "#c9d9d3", "#8fb9b6", "#4d8a96", "#17506b", "#0c2b3d")
@@ -157,7 +163,7 @@ def in_house_style(draw: _Drawing) -> _Drawing:
     return drawn  # type: ignore[return-value]
 
 
-def new_axes(ax: Axes | None, *, width: float = 6.4, height: float = 3.6) -> Axes:
+def new_axes(ax: Axes | None, *, width: float = PAGE_WIDTH, height: float = 3.2) -> Axes:
     """The axes given, or those of a new figure of that size [inch]."""
     import matplotlib.pyplot as plt
 
@@ -258,7 +264,12 @@ def legend_below(ax: Axes, columns: int, handles: Sequence[Artist] | None = None
     if handles is not None:
         shown, names = list(handles), [str(handle.get_label()) for handle in handles]
     if figure is not None and len(figure.axes) <= 2 and ax is figure.axes[0]:
-        figure.legend(shown, names, loc="outside lower center", ncols=min(columns, 3))
+        # As many side by side as the width of the figure has room for.
+        room = int(
+            12 * float(figure.bbox.width / figure.dpi) / (max(map(len, names), default=0) + 6)
+        )
+        side_by_side = max(1, min(columns, 3, room))
+        figure.legend(shown, names, loc="outside lower center", ncols=side_by_side)
     else:
         ax.legend(shown, names, loc="best")
 
@@ -269,18 +280,6 @@ def level_room(ax: Axes) -> None:
     middle = (low + high) / 2
     reach = max(1.15 * (high - low) / 2, 0.15 * middle)
     ax.set_ylim(max(0.0, middle - reach), middle + reach)
-
-
-def number_text(value: float, decimals: int = 0) -> str:
-    """A number as a person reads it: narrow spaces between thousands, a real minus sign.
-
-    NaN is an en dash.
-    """
-    if value != value:
-        return "–"
-    text = f"{value:,.{decimals}f}".replace(",", "\u202f")
-    # -0.0 and what rounds to it are zero to a reader.
-    return text.lstrip("-") if float(f"{value:.{decimals}f}") == 0 else text.replace("-", "−")
 
 
 def save_png(figure: Figure | Axes, path: Path | str) -> Path:

@@ -67,6 +67,8 @@ class Cover:
         What the answer is and is not.
     facts : mapping of str to str
         More lines, such as coordinates or the turbine.
+    mind : sequence of str
+        What a reviewer should mind: departures and warnings, a sentence each.
     """
 
     title: str
@@ -78,6 +80,7 @@ class Cover:
     reason_for_revision: str = ""
     status: str = STATUS
     facts: Mapping[str, str] = field(default_factory=dict)
+    mind: Sequence[str] = ()
 
 
 def write_report(
@@ -203,10 +206,15 @@ def _cover(cover: Cover, headline: Table | None) -> str:
         if str(text).strip()
     )
     levels = f'\n<div class="headline">\n{headline.to_html()}\n</div>' if headline else ""
+    mind = "".join(f"<li>{escape(sentence)}</li>\n" for sentence in cover.mind)
+    if mind:
+        heading = "<h2>What a reviewer should mind</h2>"
+        mind = f'\n<section class="mind">\n{heading}\n<ul>\n{mind}</ul>\n</section>'
     return (
         f'<header class="cover">\n<h1>{escape(cover.title)}</h1>\n'
         f'<p class="site">{escape(cover.site)}</p>\n'
-        f'<p class="status">{escape(cover.status)}</p>\n<dl>\n{listed}\n</dl>{levels}\n</header>'
+        f'<p class="status">{escape(cover.status)}</p>\n<dl>\n{listed}\n</dl>'
+        f"{levels}{mind}\n</header>"
     )
 
 

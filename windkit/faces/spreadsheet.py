@@ -1,34 +1,35 @@
 """The tables of a study as one spreadsheet.
 
-A first sheet lists the results with unit and basis and every sheet that follows; then one sheet
-a table. The same tables give the same bytes. Text is text: what begins like a formula is never
-one. Not here: which tables a study hands over, and their numbers.
+A first sheet lists every sheet that follows, a second the results with unit and basis; then one
+sheet a table. The same tables give the same bytes. Text is text: what begins like a formula is
+never one. Not here: which tables a study hands over, and how a value becomes a cell
+(`windkit.faces.cells`).
 """
 
 from __future__ import annotations
 
 import datetime as dt
 import io
-import math
 import os
 import re
 import zipfile
 from collections.abc import Iterable, Mapping, Sequence
-from numbers import Integral, Real
+from numbers import Real
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from windkit.faces.cells import cell_value, column_format, number_format, typed_values
 from windkit.faces.look import INK, MAIN, MUTED
-from windkit.faces.tables import DECIMALS_BY_UNIT, unit_text
+from windkit.faces.wording import as_printed, column_heading, split_unit, unit_text
 
 if TYPE_CHECKING:
     import pandas as pd
     from openpyxl.worksheet.worksheet import Worksheet
 
-__all__ = ["CONTENTS", "write_tables"]
+__all__ = ["CONTENTS", "RESULTS", "write_tables"]
 
-#: Name of the first sheet.
-CONTENTS = "Contents"
+#: Names of the first two sheets.
+CONTENTS, RESULTS = "Contents", "Results"
 
 #: Bounds of the file format (ECMA-376; common practice): sheet name, rows, text of a cell.
 LONGEST_NAME = 31
@@ -42,20 +43,8 @@ _NOT_IN_NAME = re.compile(r"[\[\]:*?/\\]")
 _NO_TIME = dt.datetime(2000, 1, 1)
 _ZIP_TIME = (1980, 1, 1, 0, 0, 0)
 
-#: Endings of keys that say the unit of a plain result.
-_UNIT_BY_ENDING = {
-    "_mwh_per_year": "MWh/year",
-    "_mwh": "MWh",
-    "_kg_m3": "kg/m3",
-    "_w_m2": "W/m2",
-    "_m_s": "m/s",
-    "_deg": "deg",
-    "_kw": "kW",
-    "_pa": "Pa",
-    "_k": "K",
-    "_h": "h",
-    "_m": "m",
-}
+#: Ground of what must not be overlooked.
+_STANDS_OUT = "#fbe9d7"
 
 
 def write_tables(
@@ -64,6 +53,7 @@ def write_tables(
     results: Mapping[str, Any] | Sequence[Any] = (),
     *,
     title: str = "",
+    departures: Sequence[str] = (),
 ) -> Path:
     """Write tables and results as a spreadsheet.
 
@@ -72,15 +62,18 @@ def write_tables(
     path : Path or str
         File to write; an older one is replaced only by a whole new one.
     tables : mapping of name to DataFrame
-        One sheet each. ``frame.attrs`` may hold ``caption``, ``basis`` and ``units`` (a mapping
-        of column to unit). An index that only counts rows is left out. Times with a zone are
-        written in UTC, and the header says so.
+        One sheet each; one without rows is left out, and the contents say so. ``frame.attrs`` may
+        hold ``caption``, ``basis`` and ``units`` (a mapping of column to unit). A column of texts
+        that are all times or all numbers is written as such. An index that only counts rows is
+        left out. Times with a zone are written in UTC, and the header says so.
     results : mapping, or sequence of objects
-        Results for the first sheet: either objects with `label`, `value`, `unit` and `basis`
+        Results for the second sheet: either objects with `label`, `value`, `unit` and `basis`
         (and `key`, if they have one), or a mapping as in ``results.json``, nested or with dotted
         keys, whose keys end in their unit. Two numbers are an interval.
     title : str
-        Title of the study, above the first sheet.
+        Title of the study; it stands in the file's properties and above the results.
+    departures : sequence of str
+        Sentences that stand out above the results.
 
     Returns
     -------
@@ -95,13 +88,17 @@ def write_tables(
     """
     from openpyxl import Workbook
 
-    names = _sheet_names(tables)
+    shown = {name: frame for name, frame in tables.items() if len(frame)}
+    names = _sheet_names(shown)
     book = Workbook()
     front = book.active
     assert front is not None
     front.title = CONTENTS
-    _write_contents(front, tables, names, results, title)
-    for name, frame in tables.items():
+    lines = list(_result_lines(results))
+    _write_contents(front, tables, names, len(lines))
+    if lines or departures:
+        _write_results(book.create_sheet(RESULTS), lines, title, departures)
+    for name, frame in shown.items():
         _write_table(book.create_sheet(names[name]), name, frame)
     book.properties.creator = "Site study"
     book.properties.title = title
@@ -115,43 +112,64 @@ def _write_contents(
     sheet: Worksheet,
     tables: Mapping[str, pd.DataFrame],
     names: Mapping[str, str],
-    results: Mapping[str, Any] | Sequence[Any],
-    title: str,
+    result_count: int,
 ) -> None:
+    _heads(sheet, 1, ["Sheet", "Content", "Rows", "Columns", "Basis"])
+    entries: list[tuple[str, str, int, int, str]] = []
+    if result_count:
+        entries.append((RESULTS, "Figures of merit with unit and basis", result_count, 5, ""))
+    for name, frame in tables.items():
+        said = str(frame.attrs.get("caption", _words(name)))
+        if name not in names:
+            said += " (empty, left out)"
+        basis = str(frame.attrs.get("basis", ""))
+        entries.append((names.get(name, ""), said, len(frame), frame.shape[1], basis))
+    for row, entry in enumerate(entries, start=2):
+        for column, value in enumerate(entry, start=1):
+            _put(sheet.cell(row, column), value, colour=MUTED if column == 5 else INK)
+        if entry[0]:
+            link = sheet.cell(row, 1)
+            quoted = entry[0].replace("'", "''")
+            link.hyperlink = f"#'{quoted}'!A1"
+            _put(link, entry[0], colour=MAIN)
+    sheet.freeze_panes = "A2"
+    _widths(sheet, [34, 60, 10, 10, 60])
+
+
+def _write_results(
+    sheet: Worksheet,
+    lines: Sequence[tuple[str, Any, Any, str, str, bool]],
+    title: str,
+    departures: Sequence[str],
+) -> None:
+    from openpyxl.styles import PatternFill
+
     row = 1
     if title:
         _put(sheet.cell(row, 1), title, size=14, bold=True)
         row += 2
-    lines = list(_result_lines(results))
-    if lines:
-        row = _heads(sheet, row, ["Result", "Value", "to", "Unit", "Basis"])
-        for label, low, high, unit, basis in lines:
-            shown = (label, low, high, unit_text(unit), basis)
-            for column, value in enumerate(shown, start=1):
-                cell = sheet.cell(row, column)
-                _put(cell, value, colour=MUTED if column == 5 else INK)
-                if column in (2, 3):
-                    cell.number_format = _number_format(value, unit)
+    if departures:
+        said = ["Departures from study.toml", *departures]
+        for place, sentence in enumerate(said):
+            for column in range(1, 6):
+                fill = PatternFill("solid", fgColor=_STANDS_OUT.lstrip("#"))
+                sheet.cell(row, column).fill = fill
+            _put(sheet.cell(row, 1), sentence, bold=place == 0)
+            sheet.cell(row, 1).alignment = _unwrapped()
             row += 1
         row += 1
-    row = _heads(sheet, row, ["Sheet", "Rows", "Columns", "Content", "Basis"])
-    for name, frame in tables.items():
-        attributes = frame.attrs
-        entry = (
-            names[name],
-            len(frame),
-            frame.shape[1],
-            attributes.get("caption", name),
-            attributes.get("basis", ""),
-        )
-        for column, value in enumerate(entry, start=1):
-            _put(sheet.cell(row, column), value, colour=MUTED if column == 5 else INK)
-        link = sheet.cell(row, 1)
-        quoted = names[name].replace("'", "''")
-        link.hyperlink = f"#'{quoted}'!A1"
-        _put(link, names[name], colour=MAIN)
+    row = _heads(sheet, row, ["Result", "Value", "to", "Unit", "Basis"])
+    sheet.freeze_panes = f"A{row}"
+    for label, low, high, unit, basis, as_percent in lines:
+        values = (as_printed(label), low, high, unit_text(unit), as_printed(basis))
+        for column, value in enumerate(values, start=1):
+            cell = sheet.cell(row, column)
+            _put(cell, value, colour=MUTED if column == 5 else INK)
+            if column in (2, 3):
+                is_share = as_percent and isinstance(value, Real)
+                cell.number_format = "0.0 %" if is_share else number_format(value, unit)
         row += 1
-    _widths(sheet, [34, 16, 16, 40, 60])
+    _widths(sheet, [44, 16, 16, 14, 90])
 
 
 def _write_table(sheet: Worksheet, name: str, frame: pd.DataFrame) -> None:
@@ -170,10 +188,10 @@ def _write_table(sheet: Worksheet, name: str, frame: pd.DataFrame) -> None:
     heads, columns, formats = [], [], []
     for position, column in enumerate(whole.columns):
         values = whole.iloc[:, position]
-        unit = str(units.get(column, ""))
+        unit = str(units.get(column, "")) or split_unit(str(column))[1]
         heads.append(_head(column, unit, values))
-        columns.append([_plain(value) for value in values])
-        formats.append(_column_format(columns[-1], unit))
+        columns.append(typed_values([cell_value(value) for value in values]))
+        formats.append(column_format(columns[-1], unit))
     _heads(sheet, 1, heads)
     for row, line in enumerate(zip(*columns, strict=True), start=2):
         for place, value in enumerate(line):
@@ -194,48 +212,54 @@ def _write_table(sheet: Worksheet, name: str, frame: pd.DataFrame) -> None:
 
 def _result_lines(
     results: Mapping[str, Any] | Sequence[Any],
-) -> Iterable[tuple[str, Any, Any, str, str]]:
-    """Label, value, upper end of an interval, unit and basis of each result."""
+) -> Iterable[tuple[str, Any, Any, str, str, bool]]:
+    """Label, value, upper end of an interval, unit, basis, and whether it reads as per cent."""
     if isinstance(results, Mapping):
         yield from _mapped_lines(results, "")
         return
     for row in results:
         low, high = _ends(row.value)
-        yield str(row.label), low, high, str(row.unit), str(row.basis)
+        as_percent = bool(getattr(row, "as_percent", False))
+        yield str(row.label), low, high, str(row.unit), str(row.basis), as_percent
 
 
 def _mapped_lines(
     results: Mapping[str, Any], prefix: str
-) -> Iterable[tuple[str, Any, Any, str, str]]:
+) -> Iterable[tuple[str, Any, Any, str, str, bool]]:
     for key, value in results.items():
         name = f"{prefix}{key}"
         if isinstance(value, Mapping) and "value" in value:
             low, high = _ends(value["value"])
-            yield name, low, high, str(value.get("unit", "")), str(value.get("basis", ""))
+            unit, basis = str(value.get("unit", "")), str(value.get("basis", ""))
+            yield name, low, high, unit, basis, False
         elif isinstance(value, Mapping):
             yield from _mapped_lines(value, f"{name}.")
         else:
             low, high = _ends(value)
-            yield name, low, high, _unit_of(name), ""
+            unit = "1" if name.endswith("weibull_k") else split_unit(name)[1]
+            yield name, low, high, unit, "", False
 
 
-def _unit_of(key: str) -> str:
-    found = (unit for ending, unit in _UNIT_BY_ENDING.items() if key.lower().endswith(ending))
-    # The shape k of a Weibull distribution is no temperature.
-    return "1" if key.endswith("weibull_k") else next(found, "")
+def _words(name: str) -> str:
+    """What a table holds, from its name ``step.table``."""
+    return name.replace(".", ": ", 1).replace("_", " ")
 
 
 def _ends(value: Any) -> tuple[Any, Any]:
     if isinstance(value, list | tuple):
         if len(value) == 2:
-            return _plain(value[0]), _plain(value[1])
+            return cell_value(value[0]), cell_value(value[1])
         return ", ".join(str(part) for part in value), None
-    return _plain(value), None
+    return cell_value(value), None
 
 
 def _sheet_names(tables: Mapping[str, Any]) -> dict[str, str]:
     """Names a spreadsheet allows, none of them twice."""
-    taken = {CONTENTS.lower(), "history"}  # the second is kept for the program itself
+    taken = {
+        CONTENTS.lower(),
+        RESULTS.lower(),
+        "history",
+    }  # the last is kept for the program itself
     names = {}
     for table in tables:
         clean = _NOT_IN_NAME.sub(" ", str(table)).strip().strip("'") or "Table"
@@ -249,36 +273,8 @@ def _sheet_names(tables: Mapping[str, Any]) -> dict[str, str]:
 
 
 def _head(column: Any, unit: str, values: pd.Series[Any]) -> str:
-    parts = column if isinstance(column, tuple) else (column,)
-    name = " ".join(str(part) for part in parts if str(part))
-    if getattr(values.dtype, "tz", None) is not None:
-        return f"{name} (UTC)"
-    return f"{name} [{unit_text(unit)}]" if unit and unit != "1" else name
-
-
-def _plain(value: Any) -> Any:
-    """A value as a cell takes it; None leaves the cell empty."""
-    import pandas as pd
-
-    if value is None or value is pd.NaT or value is pd.NA:
-        return None
-    if isinstance(value, bool) or type(value).__name__ in ("bool_", "bool"):
-        return bool(value)
-    if isinstance(value, Integral):
-        return int(value)
-    if isinstance(value, Real):
-        number = float(value)
-        if math.isnan(number):
-            return None
-        return number if math.isfinite(number) else ("infinite" if number > 0 else "-infinite")
-    if isinstance(value, dt.datetime):
-        zoned = value.astimezone(dt.UTC) if value.tzinfo is not None else value
-        return pd.Timestamp(zoned).tz_localize(None).to_pydatetime(warn=False)
-    if isinstance(value, dt.date | dt.timedelta):
-        return value
-    if isinstance(value, list | tuple):
-        return ", ".join(str(part) for part in value)
-    return str(value)
+    name = column_heading(column, unit)
+    return f"{name} (UTC)" if getattr(values.dtype, "tz", None) is not None else name
 
 
 def _put(
@@ -309,6 +305,12 @@ def _put(
         cell.alignment = Alignment(wrap_text=True, vertical="top")
 
 
+def _unwrapped() -> Any:
+    from openpyxl.styles import Alignment
+
+    return Alignment(wrap_text=False, vertical="center")
+
+
 def _heads(sheet: Worksheet, row: int, heads: Sequence[str]) -> int:
     from openpyxl.styles import Alignment, Border, PatternFill, Side
 
@@ -319,37 +321,6 @@ def _heads(sheet: Worksheet, row: int, heads: Sequence[str]) -> int:
         cell.alignment = Alignment(wrap_text=True, vertical="center")
         cell.border = Border(bottom=Side(style="thin", color=INK.lstrip("#")))
     return row + 1
-
-
-def _number_format(value: Any, unit: str) -> str:
-    if isinstance(value, str | bool) or value is None:
-        return "General"
-    if isinstance(value, dt.datetime):
-        return "yyyy-mm-dd hh:mm"
-    if isinstance(value, dt.date):
-        return "yyyy-mm-dd"
-    if isinstance(value, dt.timedelta):
-        return "[h]:mm"
-    if isinstance(value, int) or DECIMALS_BY_UNIT.get(unit) == 0:
-        # Years and counts alike: a group separator only where it helps.
-        return "#,##0" if abs(value) >= 10_000 else "0"
-    decimals = DECIMALS_BY_UNIT.get(unit)
-    if decimals is None:
-        size = abs(value)
-        decimals = 0 if size >= 10_000 else 1 if size >= 1000 else 2 if size >= 10 else 4
-    return f"#,##0.{'0' * decimals}" if decimals else "#,##0"
-
-
-def _column_format(values: Sequence[Any], unit: str) -> str:
-    there = [value for value in values if value is not None and not isinstance(value, str | bool)]
-    if not there:
-        return "General"
-    if any(isinstance(value, dt.date | dt.timedelta) for value in there):
-        return _number_format(there[0], unit)
-    largest = max(there, key=abs)
-    if any(isinstance(value, float) for value in there):
-        largest = float(largest)
-    return _number_format(largest, unit)
 
 
 def _width(head: str, values: Sequence[Any]) -> float:

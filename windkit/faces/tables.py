@@ -6,67 +6,38 @@ here: where the values come from; a table computes nothing.
 
 from __future__ import annotations
 
+import datetime as dt
+import re
 from collections.abc import Callable, Mapping, Sequence
 from html import escape
 from numbers import Integral, Real
 from typing import TYPE_CHECKING, Any
 
-from windkit.faces.look import ACCENT, GRID, INK, MUTED, number_text
+from windkit.faces.look import ACCENT, GRID, INK, MUTED
+from windkit.faces.wording import (
+    BEFORE_PERCENT,
+    DECIMALS_BY_UNIT,
+    MISSING,
+    THOUSANDS,
+    as_printed,
+    column_heading,
+    number_text,
+    percent_number,
+    percent_text,
+    unit_text,
+)
 
 if TYPE_CHECKING:
     import pandas as pd
 
 __all__ = [
-    "DECIMALS_BY_UNIT",
-    "MISSING",
     "TABLE_STYLE",
+    "WORDED",
     "Table",
     "exceedance_table_view",
     "results_table",
-    "unit_text",
     "value_text",
 ]
-
-#: What stands where there is no value.
-MISSING = "–"
-
-#: Decimals a reader is shown, by unit; any other unit gets four significant digits.
-DECIMALS_BY_UNIT: dict[str, int] = {
-    "m/s": 2,
-    "kg/m3": 3,
-    "1": 3,
-    "%": 1,
-    "m": 1,
-    "m2": 0,
-    "deg": 0,
-    "K": 1,
-    "degC": 1,
-    "Pa": 0,
-    "hPa": 1,
-    "W": 0,
-    "kW": 0,
-    "MW": 2,
-    "W/m2": 0,
-    "kWh": 0,
-    "MWh": 0,
-    "MWh/year": 0,
-    "GWh": 2,
-    "GWh/year": 2,
-    "h": 0,
-    "h/year": 0,
-    "months": 1,
-    "years": 1,
-}
-
-_UNIT_SIGNS = {
-    "1": MISSING,
-    "kg/m3": "kg/m³",
-    "W/m2": "W/m²",
-    "m2": "m²",
-    "m3": "m³",
-    "deg": "°",
-    "degC": "°C",
-}
 
 #: Style that travels with a table; the report carries it once and leaves it out of the tables.
 TABLE_STYLE = f"""<style>
@@ -75,10 +46,15 @@ TABLE_STYLE = f"""<style>
 .site-table caption {{ caption-side: top; text-align: left; padding: 0 0 0.4em; font-weight: 600; }}
 .site-table th, .site-table td {{ padding: 0.28em 0.9em 0.28em 0.25em; vertical-align: top;
   border: 0; border-bottom: 1px solid {GRID}; text-align: left; background: white; }}
+.site-table .num {{ text-align: right; white-space: nowrap; }}
+.site-table .stamp, .site-table .stamp span {{ white-space: nowrap; }}
+.site-table .some {{ min-width: 7em; }} .site-table .line {{ min-width: 14em; }}
 .site-table thead th {{ border-bottom: 1.5px solid {INK}; font-weight: 600;
   vertical-align: bottom; }}
+.site-table thead th.num {{ white-space: normal; max-width: 7em; }}
 .site-table tbody th {{ font-weight: 500; }}
-.site-table .num {{ text-align: right; white-space: nowrap; }}
+.site-table.many {{ font-size: 0.86em; }} .site-table.many .stamp {{ white-space: normal; }}
+.site-table.many :is(th, td) {{ padding-right: 0.6em; }}
 .site-table .quiet {{ color: {MUTED}; }}
 .site-table tbody tr:last-child > * {{ border-bottom: 1.5px solid {INK}; }}
 .site-table .mark {{ color: {ACCENT}; font-weight: 600; }}
@@ -86,17 +62,20 @@ TABLE_STYLE = f"""<style>
 
 Format = str | Callable[[Any], str]
 
-#: How a column's name says its unit, longest ending first.
-_UNIT_BY_ENDING: dict[str, str] = {
-    "_mwh_per_year": "MWh/year",
-    "_kg_m3": "kg/m³",
-    "_m_s": "m/s",
-    "_kw": "kW",
-    "_deg": "°",
-    "_hpa": "hPa",
-    "_c": "°C",
-    "_m": "m",
-}
+#: A date, or a date and time: never broken over two lines.
+_STAMP = re.compile(r"\d{4}-\d\d-\d\d( \d\d:\d\d)?")
+
+#: A format specification that writes a fraction as a percentage.
+_SHARE = re.compile(r"(\+?)\.(\d)%")
+
+#: Columns whose cells hold names of the study file; a reader sees them as words.
+WORDED = {"group", "of", "varies"}
+#: Columns of whole numbers that count nothing.
+_UNGROUPED = {"year"}
+#: From so many columns on a table is set closer.
+_MANY_COLUMNS = 8
+#: Texts longer than so many characters get room for a few words or for a line.
+_SOME_WORDS, _A_LINE = 14, 32
 
 
 class Table:
@@ -143,15 +122,15 @@ class Table:
                 f"formats names {sorted(unknown)}, but the columns are "
                 f"{[str(column) for column in frame.columns]}"
             )
-        self.caption = caption
-        self._columns = [_heading(column) for column in frame.columns]
-        self._quiet = {_heading(column) for column in quiet}
+        self.caption = as_printed(caption)
+        self._columns = [column_heading(column) for column in frame.columns]
+        self._quiet = {column_heading(column) for column in quiet}
         self._texts: list[list[str]] = []
         self._numeric: list[bool] = []
         for position, column in enumerate(frame.columns):
             values = list(frame.iloc[:, position])
             write = (formats or {}).get(str(column))
-            self._texts.append(_column_texts(values, write))
+            self._texts.append(_column_texts(str(column), values, write))
             self._numeric.append(_all_numbers(values))
 
     @property
@@ -170,10 +149,16 @@ class Table:
         kinds = [
             " ".join(
                 kind
-                for kind, wanted in (("num", numeric), ("quiet", heading in self._quiet))
+                for kind, wanted in (
+                    ("num", numeric),
+                    ("quiet", heading in self._quiet),
+                    (_room(texts), not numeric and _room(texts)),
+                )
                 if wanted
             )
-            for heading, numeric in zip(self._columns, self._numeric, strict=True)
+            for heading, numeric, texts in zip(
+                self._columns, self._numeric, self._texts, strict=True
+            )
         ]
         head = "".join(_cell("th", *pair) for pair in zip(self._columns, kinds, strict=True))
         body = "\n".join(
@@ -181,9 +166,10 @@ class Table:
             for row in self.cells
         )
         caption = f"<caption>{escape(self.caption)}</caption>\n" if self.caption else ""
+        close = " many" if len(self._columns) >= _MANY_COLUMNS else ""
         return (
             (TABLE_STYLE + "\n" if with_style else "")
-            + f'<table class="site-table">\n{caption}<thead><tr>{head}</tr></thead>\n'
+            + f'<table class="site-table{close}">\n{caption}<thead><tr>{head}</tr></thead>\n'
             + f"<tbody>\n{body}\n</tbody>\n</table>"
         )
 
@@ -225,10 +211,10 @@ def results_table(rows: Sequence[Any], *, caption: str = "") -> Table:
         as_percent = bool(getattr(row, "as_percent", False))
         lines.append(
             {
-                "Result": row.label,
+                "Result": as_printed(row.label),
                 "Value": value_text(row.value, row.unit, as_percent=as_percent),
                 "Unit": "%" if as_percent else unit_text(row.unit),
-                "Basis": row.basis,
+                "Basis": as_printed(row.basis),
             }
         )
     table = Table(lines, caption=caption, quiet=["Basis"])
@@ -297,31 +283,17 @@ def value_text(value: Any, unit: str = "", *, as_percent: bool = False) -> str:
     if isinstance(value, Integral) and not as_percent:
         return number_text(int(value))
     if isinstance(value, Real):
-        number = float(value) * (100 if as_percent else 1)
-        shown = "%" if as_percent else unit
-        return number_text(number, DECIMALS_BY_UNIT.get(shown, _decimals([number])))
+        number = float(value)
+        if as_percent:
+            return percent_number(number, DECIMALS_BY_UNIT["%"])
+        return number_text(number, DECIMALS_BY_UNIT.get(unit, _decimals([number])))
     return str(value)
-
-
-def unit_text(unit: str) -> str:
-    """A unit as print sets it: ``kg/m3`` becomes kg/m³, a plain ratio a dash."""
-    return _UNIT_SIGNS.get(unit, unit)
 
 
 def _only_counts(index: pd.Index) -> bool:
     import pandas as pd
 
     return isinstance(index, pd.RangeIndex) and index.name is None
-
-
-def _heading(column: Any) -> str:
-    if isinstance(column, tuple):
-        return " ".join(_heading(part) for part in column if str(part))
-    name = str(column)
-    for ending, unit in _UNIT_BY_ENDING.items():
-        if name.endswith(ending):
-            return f"{name.removesuffix(ending).replace('_', ' ')} [{unit}]"
-    return name.replace("_", " ")
 
 
 def _is_missing(value: Any) -> bool:
@@ -351,10 +323,12 @@ def _decimals(values: Sequence[float]) -> int:
     return next((d for bound, d in ((1000, 0), (100, 1), (1, 2), (0.1, 3)) if largest >= bound), 4)
 
 
-def _column_texts(values: Sequence[Any], write: Format | None) -> list[str]:
+def _column_texts(name: str, values: Sequence[Any], write: Format | None) -> list[str]:
     numbers = [float(value) for value in values if _is_number(value) and not _is_missing(value)]
     whole = all(isinstance(value, Integral) for value in values if not _is_missing(value))
     decimals = 0 if whole else _decimals(numbers)
+    stamps = [value for value in values if isinstance(value, dt.datetime) and value == value]
+    days = all(stamp.time() == dt.time() for stamp in stamps)
 
     def text(value: Any) -> str:
         if _is_missing(value):
@@ -364,18 +338,52 @@ def _column_texts(values: Sequence[Any], write: Format | None) -> list[str]:
         if write is not None and write in DECIMALS_BY_UNIT:
             return value_text(float(value) if _is_number(value) else value, write)
         if write is not None:
-            return format(value, write).replace(",", "\u202f")
+            return _formatted(value, write)
         if _is_number(value):
-            return number_text(float(value), decimals)
-        return value_text(value)
+            return str(value) if whole and name in _UNGROUPED else number_text(value, decimals)
+        if isinstance(value, dt.datetime):
+            return format(value, "%Y-%m-%d" if days else "%Y-%m-%d %H:%M")
+        shown = value_text(value)
+        if name in WORDED:
+            return shown.replace("_", " ")
+        return as_printed(shown) if _is_prose(shown) else shown
 
     return [text(value) for value in values]
 
 
+def _formatted(value: Any, write: str) -> str:
+    """A value by its format specification, in the style of all other numbers."""
+    if share := _SHARE.fullmatch(write):
+        return percent_text(float(value), int(share[2]), signed=bool(share[1]))
+    text = format(value, write)
+    if not _is_number(value):
+        return text
+    if not any(digit in text for digit in "123456789"):
+        text = text.lstrip("+-")  # nothing has no sign
+    return text.replace(",", THOUSANDS).replace("-", "−").replace("%", f"{BEFORE_PERCENT}%")
+
+
+def _is_prose(text: str) -> bool:
+    return " " in text and any(letter.isalpha() for letter in text)
+
+
+def _room(texts: Sequence[str]) -> str:
+    """How much room a column of texts asks for, so that numbers beside it do not starve it."""
+    longest = max((len(text) for text in texts if " " in text), default=0)
+    if any(_STAMP.fullmatch(text) for text in texts):
+        return ""
+    return "line" if longest > _A_LINE else "some" if longest > _SOME_WORDS else ""
+
+
 def _cell(tag: str, text: str, kind: str) -> str:
+    shown = escape(text)
+    if tag == "td" and _STAMP.fullmatch(text):
+        kind = f"{kind} stamp".strip()
+        # A close table may set the time below the date, but never breaks either.
+        shown = " ".join(f"<span>{part}</span>" for part in text.split())
     kinds = f' class="{kind}"' if kind else ""
     scope = ' scope="col"' if tag == "th" else ""
-    return f"<{tag}{scope}{kinds}>{escape(text)}</{tag}>"
+    return f"<{tag}{scope}{kinds}>{shown}</{tag}>"
 
 
 def _period_text(period: Any) -> str:

@@ -10,12 +10,13 @@ from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
 from windkit.faces.tables import (
+    WORDED,
     Table,
     exceedance_table_view,
     results_table,
-    unit_text,
     value_text,
 )
+from windkit.faces.wording import MISSING, as_printed, percent_text, unit_text
 from windkit.study.artifacts import Outcome
 from windkit.study.folder import Study
 from windkit.study.verdict import TURBULENCE, verdict_matrix
@@ -25,24 +26,26 @@ __all__ = [
     "exceedance_text",
     "exceedance_view",
     "listing",
+    "method_scores",
+    "reference_trial",
     "results",
     "say",
+    "setting_text",
     "settings",
     "verdict",
     "warnings",
     "written",
 ]
 
-_LONGEST_VALUE = 60
 #: Groups held against no more than these are shown as rows.
 _FEW_COLUMNS = ("every class", "normal range", "extreme range", "the machine")
 
 
 class Said:
-    """Sentences that show as text in a workbook and in the report."""
+    """Sentences that show as text in a workbook and in the report, numbers as in the tables."""
 
     def __init__(self, *sentences: str) -> None:
-        self.sentences = sentences
+        self.sentences = tuple(as_printed(sentence) for sentence in sentences)
 
     def __repr__(self) -> str:
         return "\n".join(self.sentences)
@@ -135,8 +138,9 @@ def settings(study: Study, sections: Sequence[str]) -> Table:
             if value in (None, "") or _is_list_of_tables(value):
                 continue
             path = f"{section}.{key}"
-            origin = "parameters cell" if path in study.overrides else "study.toml"
-            rows.append({"Decision": path, "Value": _short(value), "Set in": origin})
+            # A parameter may come from the workbook's cell or from the command line.
+            origin = "parameters" if path in study.overrides else "study.toml"
+            rows.append({"Decision": path, "Value": setting_text(value), "Set in": origin})
     return Table(rows, caption="Decisions this workbook stands on", quiet=["Set in"])
 
 
@@ -145,18 +149,79 @@ def listing(study: Study, path: str) -> Table:
     section, _, key = path.partition(".")
     entries = study.section(section)[key] if key else study.section(section)
     used = [name for name in entries[0] if any(entry[name] not in (None, []) for entry in entries)]
-    rows = [{name: _short(entry[name]) for name in used} for entry in entries]
-    return Table(rows, caption=f"[[{path}]] of study.toml", quiet=["basis"])
+    rows = [{name: entry[name] for name in used} for entry in entries]
+    # Numbers stand as they were written: this quotes the file.
+    formats = {name: setting_text for name in used if name not in WORDED}
+    return Table(rows, caption=f"[[{path}]] of study.toml", formats=formats, quiet=["basis"])
 
 
 def _is_list_of_tables(value: Any) -> bool:
     return isinstance(value, list) and bool(value) and isinstance(value[0], Mapping)
 
 
-def _short(value: Any) -> str:
+def setting_text(value: Any) -> str:
+    """A value of `study.toml` as a person reads it, never shortened."""
     if value is None:
-        return "–"
+        return MISSING
+    if isinstance(value, bool):
+        return "yes" if value else "no"
     if isinstance(value, list):
-        value = ", ".join(map(str, value)) or "none"
-    text = f"{value:g}" if isinstance(value, float) else str(value)
-    return text if len(text) <= _LONGEST_VALUE else text[: _LONGEST_VALUE - 1] + "…"
+        return ", ".join(setting_text(part) for part in value) or "none"
+    return f"{value:.10g}" if isinstance(value, float) else str(value)
+
+
+def reference_trial(outcome: Outcome) -> Table:
+    """The references on trial, one column each: what they rest on, the verdict and its reason."""
+    trial = outcome.tables["references"].set_index("reference")
+    rows = []
+    for key, label, write in _TRIAL_LINES:
+        if key in trial.columns:
+            texts = {str(name): write(trial.loc[name, key]) for name in trial.index}
+            rows.append({"": label, **texts})
+    return Table(rows, caption="References on trial, best first")
+
+
+def method_scores(outcome: Outcome) -> Table:
+    """The score table of all methods, best first, as fractions a person reads as per cent."""
+    scores = outcome.tables["scores"].drop(columns="keeps_spread")
+    shares = [name for name in scores.columns if name.endswith("_error") or name.startswith("from")]
+    return Table(
+        scores,
+        caption="Methods on held-out blocks, best first",
+        formats=dict.fromkeys(shares, ".1%") | {"score": ".3f"},
+    )
+
+
+def _share(value: Any) -> str:
+    return percent_text(float(value))
+
+
+def _figure(value: Any) -> str:
+    return MISSING if value != value else f"{value:.2f}"
+
+
+_TRIAL_LINES: tuple[tuple[str, str, Any], ...] = (
+    ("verdict", "verdict", str),
+    ("reason", "reason", str),
+    ("overlap_days", "overlap [days]", lambda value: f"{value:.0f}"),
+    ("recovery", "recovery in the overlap", _share),
+    ("seasons_covered", "seasons covered", lambda value: f"{value:.0f}"),
+    ("correlation_hourly", "correlation, hourly", _figure),
+    ("correlation_daily", "correlation, daily", _figure),
+    ("correlation_weekly", "correlation, weekly", _figure),
+    ("correlation_monthly", "correlation, monthly", _figure),
+    ("lag_steps", "lag [steps]", lambda value: f"{value:.0f}"),
+    ("trend_per_decade", "trend in ten years", _share),
+    (
+        "trend_significant",
+        "trend significant (Mann-Kendall)",
+        lambda value: "yes" if value else "no",
+    ),
+    ("snht_ratio", "SNHT over critical value", _figure),
+    ("pettitt_ratio", "Pettitt over critical value", _figure),
+    ("cusum_ratio", "CUSUM over critical value", _figure),
+    ("break_count", "breaks charged to it", lambda value: f"{value:.0f}"),
+    ("homogeneous_from", "homogeneous from", lambda value: f"{value:%Y-%m-%d}"),
+    ("long_term_over_campaign", "long term over campaign", lambda value: f"{value:.4f}"),
+    ("weight", "weight in the blend", _share),
+)

@@ -342,7 +342,9 @@ def density_speed_factor(
     .. [1] IEC 61400-12-1, data normalisation, turbines with active power control.
     """
     rho = refuse_not_positive("air_density", air_density, "kg/m3", "mask such values")
-    rho0 = refuse_not_positive("reference_air_density", reference_air_density, "kg/m3", "see the curve")
+    rho0 = refuse_not_positive(
+        "reference_air_density", reference_air_density, "kg/m3", "see the curve"
+    )
     return (rho / rho0) ** (1.0 / 3.0)
 
 

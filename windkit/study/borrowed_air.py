@@ -29,6 +29,7 @@ __all__ = [
     "hourly",
     "reference_air",
     "reference_density",
+    "reference_with_air",
 ]
 
 Array = NDArray[np.float64]
@@ -67,6 +68,21 @@ def density_by_step(
     at_barometer = temperature_at_height(temperature, pressure_height - temperature_height)
     p = pressure_at_height(pressure, at_barometer, hub_height - pressure_height)
     return moist_air_density(at_hub, p, relative_humidity), at_hub, p
+
+
+def reference_with_air(settings: Settings) -> ReferenceSettings | None:
+    """The reference whose air is borrowed: the one the study chose, else that with most sensors."""
+    wanted = ("air_temperature", "air_pressure", "relative_humidity")
+
+    def sensors(station: ReferenceSettings) -> int:
+        has = {c.quantity for c in station.channels if c.statistic == "mean"}
+        return len(has & set(wanted)) if has & set(wanted[:2]) else 0
+
+    chosen = settings.long_term.reference
+    if chosen is not None and sensors(settings.reference(chosen)):
+        return settings.reference(chosen)
+    best = max(settings.references, key=sensors)
+    return best if sensors(best) else None
 
 
 def reference_air(frame: pd.DataFrame, station: ReferenceSettings) -> pd.DataFrame:

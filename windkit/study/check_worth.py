@@ -13,9 +13,9 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from windkit.study.averaging import selective_average
 from windkit.study.checks import CheckSettings
 from windkit.study.checks.comparing import speed_pairs
+from windkit.study.cup_pair import speed_of_pair
 from windkit.study.ledger import AUTOMATIC, apply_ledger, ledger_of
 from windkit.study.record import Record
 
@@ -52,7 +52,7 @@ def worth_of_checks(
     it is that of accepting all of them. Means are over the values that are left, so that what a
     rule masks is not counted as zero energy. Leaving a sector out would change the mix of winds
     and say nothing about the shadow: of a cup that has a pair, the shadow's row is the change by
-    selective averaging over the same intervals.
+    averaging by direction over the same intervals.
     """
     name = channel or record.settings.main_wind_speed
     raw = record.raw[[name]]
@@ -95,10 +95,10 @@ def worth_of_checks(
 
 
 def _averaged(record: Record, name: str) -> NDArray[np.float64] | None:
-    """The selective average of a cup and its pair, if it has one."""
+    """The average by direction of a cup and its pair, if it has one."""
     for one, other in speed_pairs(record.settings, CheckSettings().pair_height_m):
         if name in {one.name, other.name}:
-            return selective_average(record, one.name, other.name).wind_speed.to_numpy(dtype=float)
+            return speed_of_pair(record, one.name, other.name).wind_speed.to_numpy(dtype=float)
     return None
 
 

@@ -20,7 +20,7 @@ from windkit.kernels.frequency import FrequencyTable, frequency_table
 from windkit.kernels.losses import combine_losses, combine_losses_by_group
 from windkit.kernels.weibull import fit_weibull
 from windkit.study.artifacts import Outcome, Row, load_artifact
-from windkit.study.borrowed_air import reference_air
+from windkit.study.borrowed_air import reference_air, reference_with_air
 from windkit.study.folder import Study
 from windkit.study.hub import HubWind, carry_to_hub
 from windkit.study.hub_air import HubAir, hub_air
@@ -34,6 +34,8 @@ __all__ = ["EnergyYield", "compute_yield"]
 _NOTHING_LEFT_OUT = pd.DataFrame(
     columns=["by", "group", "predicted_m_s", "measured_m_s", "error", "count"]
 )
+#: Difference of ground level to the mast that a reviewer should hear of [m], our choice.
+_ELEVATION_WORTH_A_WORD = 150.0
 
 
 @dataclass(frozen=True)
@@ -86,14 +88,14 @@ def compute_yield(study: Study) -> EnergyYield:
     record = measured.tables["record"]
     mast_height = measured.number("measured.height_m")
     wind = carry_to_hub(settings, measured, record, long_term.tables["series"])
-    air = hub_air(settings, record, _air_of_reference(study))
+    air = _hub_air(study, record)
     known = wind.series["wind_speed"].notna().to_numpy()
     hub = wind.series[known]
     hub_speed = hub["wind_speed"].to_numpy()
     assert isinstance(hub.index, pd.DatetimeIndex)
     hourly_density = air.at(hub.index)
     density = air.mean
-    averaging = _averaging_effect(curve, record, measured, settings, wind, density)
+    averaging = _averaging_effect(curve, measured, settings, wind, density)
 
     places = settings.layout
     factors = np.array([place.speed_factor for place in places])
@@ -233,20 +235,20 @@ def compute_yield(study: Study) -> EnergyYield:
                 "losses": losses,
             },
             said,
-            [*wind.warnings, *air.warnings],
+            [*wind.warnings, *air.warnings, *_warnings(settings)],
         ),
     )
 
 
-def _air_of_reference(study: Study) -> pd.DataFrame | None:
-    """Hourly air of the reference, which is read only if it has a thermometer or a barometer."""
-    station = study.settings.reference(study.settings.long_term.reference)
-    if not any(
-        channel.quantity in ("air_temperature", "air_pressure") for channel in station.channels
-    ):
-        return None
-    record = reference_record(study, station.name)
-    return reference_air(record.hourly(study.settings.long_term.samples_per_hour_share), station)
+def _hub_air(study: Study, record: pd.DataFrame) -> HubAir:
+    """Air at the hub; a reference is read only if it has a thermometer or a barometer."""
+    station = reference_with_air(study.settings)
+    if station is None:
+        return hub_air(study.settings, record)
+    hours = reference_record(study, station.name).hourly(
+        study.settings.long_term.samples_per_hour_share
+    )
+    return hub_air(study.settings, record, reference_air(hours, station), station)
 
 
 def _rated_speed(curve: PowerCurve) -> float:
@@ -283,21 +285,21 @@ def _density_relative_to_mast(settings: Settings) -> NDArray[np.float64]:
 
 def _averaging_effect(
     curve: PowerCurve,
-    record: pd.DataFrame,
     measured: Outcome,
     settings: Settings,
     wind: HubWind,
     air_density: float,
 ) -> float:
     """Energy of the record's own interval over that of its hourly means [1]."""
-    speed = record[str(measured.value("measured.channel"))].to_numpy(dtype=float)
-    scaled = speed * wind.factors.of(wind.kinds_of_record)
-    assert isinstance(record.index, pd.DatetimeIndex)
-    fine = pd.Series(scaled, index=record.index)
+    main = measured.tables["main"]
+    assert isinstance(main.index, pd.DatetimeIndex)
+    interval = pd.Timedelta(minutes=settings.mast.interval_min)
+    factor = wind.factor_at(main.index, main["wind_direction"].to_numpy(dtype=float), interval)
+    fine = main["wind_speed"] * factor
     hours = fine.resample("1h")
     whole = hours.count() == round(60 / settings.mast.interval_min)
     hourly = hours.mean()[whole].to_numpy()
-    inside = whole.reindex(record.index.floor("1h")).to_numpy(dtype=bool)
+    inside = whole.reindex(main.index.floor("1h")).to_numpy(dtype=bool)
     if not inside.any():
         return 1.0
     return float(
@@ -333,3 +335,21 @@ def _staircase(settings: Settings, gross: float) -> pd.DataFrame:
         if loss.loss > 0:
             steps.append((loss.name, left))
     return pd.DataFrame(steps, columns=["step", "energy_mwh_per_year"])
+
+
+def _warnings(settings: Settings) -> list[str]:
+    warnings = []
+    assumed = [loss for loss in settings.losses if loss.basis.startswith("assumed")]
+    if assumed:
+        warnings.append(
+            f"{len(assumed)} of {len(settings.losses)} losses are assumed, not computed or agreed; "
+            "their basis stands in the table of losses."
+        )
+    for place in settings.layout:
+        above = place.elevation_m - settings.site.elevation_m
+        if abs(above) > _ELEVATION_WORTH_A_WORD:
+            warnings.append(
+                f"{place.name} stands {abs(above):.0f} m {'above' if above > 0 else 'below'} the "
+                "mast: one mast speaks for such a place only with a flow model behind it."
+            )
+    return warnings

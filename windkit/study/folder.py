@@ -66,8 +66,11 @@ class Study:
         return file_in_study(self.folder, name, key=key)
 
     def section(self, name: str) -> Any:
-        """The values of one table of the settings as plain JSON values."""
-        value = getattr(self.settings, name)
+        """The values of one table of the settings, or of its one key, as plain JSON values."""
+        table, _, key = name.partition(".")
+        value = getattr(self.settings, table)
+        if key:
+            return value.model_dump(mode="json")[key]
         if isinstance(value, BaseModel):
             return value.model_dump(mode="json")
         return [item.model_dump(mode="json") for item in value]

@@ -78,8 +78,8 @@ class HubWind:
     standard_uncertainty : float
         Of the mean speed at the hub from the way up alone [1].
     uncertainty_basis, basis : str
-    kinds_of_record : Kinds
-        Class of each row of the record.
+    longitude : float
+        Of the mast [deg], for sun time.
     notes, warnings : list of str
     """
 
@@ -94,9 +94,23 @@ class HubWind:
     standard_uncertainty: float
     uncertainty_basis: str
     basis: str
-    kinds_of_record: Kinds
+    longitude: float
     notes: list[str] = field(default_factory=list)
     warnings: list[str] = field(default_factory=list)
+
+    def factor_at(
+        self, index: pd.DatetimeIndex, wind_direction: Array, interval: pd.Timedelta
+    ) -> Array:
+        """Hub over main height for intervals of any record at the mast [1]."""
+        return self.factors.of(
+            kinds_of(
+                index,
+                wind_direction,
+                longitude=self.longitude,
+                interval=interval,
+                sector_count=self.factors.factor.shape[0] - 1,
+            )
+        )
 
 
 def carry_to_hub(
@@ -139,22 +153,13 @@ def carry_to_hub(
         accept_falling=choice.accept_falling_profile,
     )
     _refuse_low(data, choice, hub, main_height)
-    index, record_index = series.index, record.index
+    index = series.index
     assert isinstance(index, pd.DatetimeIndex)
-    assert isinstance(record_index, pd.DatetimeIndex)
     kinds = kinds_of(
         index,
         series["wind_direction"].to_numpy(dtype=np.float64),
         longitude=longitude,
         interval=pd.Timedelta(hours=1),
-        sector_count=sectors,
-    )
-    vane = mast.main_wind_direction
-    kinds_of_record = kinds_of(
-        record_index,
-        record[vane].to_numpy(dtype=np.float64) if vane in record else np.full(len(record), np.nan),
-        longitude=longitude,
-        interval=pd.Timedelta(minutes=mast.interval_min),
         sector_count=sectors,
     )
     speed = series["wind_speed"].to_numpy(dtype=np.float64)
@@ -193,7 +198,7 @@ def carry_to_hub(
         standard_uncertainty=uncertainty,
         uncertainty_basis=uncertainty_basis,
         basis=basis,
-        kinds_of_record=kinds_of_record,
+        longitude=longitude,
         notes=data.notes,
         warnings=_warnings(data, main_height, hub),
     )

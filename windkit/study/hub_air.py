@@ -26,7 +26,7 @@ from windkit.study.borrowed_air import (
     hourly,
     reference_density,
 )
-from windkit.study.settings import Settings
+from windkit.study.settings import ReferenceSettings, Settings
 from windkit.study.stations import ChannelSettings
 
 __all__ = ["HubAir", "hub_air"]
@@ -87,7 +87,10 @@ class HubAir:
 
 
 def hub_air(
-    settings: Settings, record: pd.DataFrame, reference: pd.DataFrame | None = None
+    settings: Settings,
+    record: pd.DataFrame,
+    reference: pd.DataFrame | None = None,
+    station: ReferenceSettings | None = None,
 ) -> HubAir:
     """Air at hub height above the mast, by step of the record and by month.
 
@@ -99,6 +102,8 @@ def hub_air(
         The checked record, on the starts of its intervals.
     reference : DataFrame, optional
         From `borrowed_air.reference_air`.
+    station : ReferenceSettings, optional
+        The reference it is from; the first of the study if left out.
 
     Returns
     -------
@@ -124,7 +129,7 @@ def hub_air(
         "relative_humidity": (HUMIDITY_WITHOUT_SENSOR, _ASSUMED),
     }
     filled, sources, levels = {}, [], {}
-    place = settings.reference(settings.long_term.reference)
+    place = station or settings.references[0]
     for quantity, channel in channels.items():
         own = record[channel.name].to_numpy(dtype=float) if channel else np.full(len(index), np.nan)
         borrowed = at_mast_level(
@@ -153,7 +158,7 @@ def hub_air(
     table = pd.concat(sources, ignore_index=True)
     mean = float(climatology.to_numpy().mean(axis=1).mean())
     warm = levels["air_temperature"] - STANDARD_LAPSE_RATE * (hub - heights["air_temperature"])
-    warnings = _warnings(monthly, settings.long_term.reference)
+    warnings = _warnings(monthly, place.name)
     return HubAir(
         density=density,
         climatology=climatology,

@@ -150,7 +150,9 @@ def correct_long_term(
         widening=widening,
         notes=notes,
         blend=blend,
-        _methods=lambda: _methods(inputs, trial, site_direction, reference_directions, power, seed),
+        _methods=lambda name: _methods(
+            inputs, name, site_direction, reference_directions, power, seed
+        ),
         _series=lambda method, mean: _series(
             inputs, trial, site_direction, reference_directions, method, mean, seed
         ),
@@ -224,13 +226,13 @@ def _directions(
 
 def _methods(
     inputs: Inputs,
-    trial: Trial,
+    name: str,
     site_direction: pd.Series | None,
     reference_directions: pd.DataFrame | None,
     power: Callable[[Array], Array] | None,
     seed: int,
 ) -> pd.DataFrame:
-    best = _best_reference(inputs, trial)
+    best = list(inputs.references.columns).index(name)
     direction, own = _directions(inputs, best, site_direction, reference_directions)
     speed = inputs.references.iloc[:, best].to_numpy()
     both = np.isfinite(inputs.site) & np.isfinite(speed)

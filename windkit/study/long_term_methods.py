@@ -34,8 +34,14 @@ Power = Callable[[Array], Array]
 MOST_BLOCKS = 12
 #: Fewest pairs in a sector of its own, as a share of all pairs [1] and at least: our choice.
 SECTOR_SHARE, LEAST_IN_SECTOR = 0.03, 40
-#: Methods that lose spread and must not feed energy.
-WITHOUT_SPREAD = ("linear regression", "linear regression by sector", "boosted trees")
+#: Methods whose series has not the site's spread and must not feed energy: a regression has too
+#: little, a line through both errors too much wherever the site is the noisier record.
+WITHOUT_SPREAD = (
+    "linear regression",
+    "linear regression by sector",
+    "total least squares",
+    "boosted trees",
+)
 
 
 def method_estimators(pair_count: int, with_direction: bool, seed: int) -> dict[str, SiteEstimator]:

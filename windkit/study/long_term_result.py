@@ -20,6 +20,9 @@ __all__ = ["LongTermCorrection"]
 
 Array = NDArray[np.float64]
 
+#: References that all methods are scored on, best first [1]; a limit to the time it takes.
+MOST_SCORED = 3
+
 
 @dataclass(frozen=True)
 class LongTermCorrection:
@@ -71,7 +74,7 @@ class LongTermCorrection:
     widening: float
     notes: list[str]
     blend: Blend
-    _methods: Callable[[], pd.DataFrame] = field(repr=False)
+    _methods: Callable[[str], pd.DataFrame] = field(repr=False)
     _series: Callable[[str, float], pd.DataFrame] = field(repr=False)
     _longer: Callable[[], pd.DataFrame] = field(repr=False)
 
@@ -99,8 +102,18 @@ class LongTermCorrection:
 
     @cached_property
     def methods(self) -> pd.DataFrame:
-        """Every method on trial by blocked hold-out, best first, and doing nothing."""
-        return self._methods()
+        """Every method on trial by blocked hold-out on the best reference, and doing nothing.
+
+        One row a method, best first; the columns are those of `method_scores`.
+        """
+        return self._methods(self.references.index[0])
+
+    @cached_property
+    def methods_by_reference(self) -> pd.DataFrame:
+        """The same table for each of the three best references, under the reference's name."""
+        used = self.references.index[self.references["verdict"] == "used"][:MOST_SCORED]
+        tables = [self.methods, *(self._methods(name) for name in used[1:])]
+        return pd.concat(tables, keys=used, names=["reference", "method"])
 
     @cached_property
     def longer_campaign(self) -> pd.DataFrame:

@@ -51,6 +51,8 @@ NEARNESS_YEARS = 2.0
 #: Yearly variability where the references are too short to show their own [1]: Raftery et al.
 #: 1999; EWEA, Wind Energy - The Facts (id MCP-3).
 FALLBACK_YEARLY_VARIABILITY = 0.06
+#: Factor from which the draws are widened [1]: below it, chance alone asks for it. Our choice.
+LEAST_WIDENING = 1.05
 #: How many times farther than its references a site's held-out months must be missed for it to be
 #: called unlike them [1]: with twelve months, chance alone reaches 1.3 to 1.4. Our choice.
 ODD_SITE = 1.4
@@ -81,6 +83,8 @@ def draw_long_term(
         spread = np.hypot(SINGLE_REFERENCE_UNCERTAINTY, sampling)
         return spread * rng.standard_t(4, DRAWS) / np.sqrt(2), 1.0
     widening = widening_factor(blend.errors)
+    if widening < LEAST_WIDENING:
+        widening = 1.0
     if widening > 1.15:
         notes.append(
             f"The references' own back-test did not support the interval as it was; it was "

@@ -1,8 +1,8 @@
 """Step 2, measured data: from the client's files to a checked record and what it says.
 
-The files are read once, checked, masked through the ledger and summed up: rows reconciled,
-recovery, profile, turbulence, wind climate of the campaign. Nothing here looks beyond the
-campaign; that is the next step.
+The files are read once, checked, masked through the ledger and summed up. The speed the study
+stands on is made here: one cup, or a pair averaged by direction, with gaps filled from the other
+sensors if the study asks for it. Nothing here looks beyond the campaign; that is the next step.
 """
 
 from __future__ import annotations
@@ -13,35 +13,33 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from windkit.kernels.curve import power_at
 from windkit.kernels.frequency import FrequencyTable, frequency_table
 from windkit.kernels.profile import fit_shear
 from windkit.kernels.weibull import WeibullFit, fit_weibull
+from windkit.study import campaign
 from windkit.study.artifacts import Outcome, Row
+from windkit.study.check_worth import worth_of_checks
+from windkit.study.checks import free_of_shadow, pair_ratio
+from windkit.study.cup_pair import PairSpeed, speed_of_pair
 from windkit.study.folder import Study
-from windkit.study.ledger import AUTOMATIC, read_ledger
-from windkit.study.reading import read_station
+from windkit.study.gap_filling import FilledChannel, fill_gaps
+from windkit.study.ledger import read_ledger
+from windkit.study.measured_words import handling_in_words, record_in_words, warnings_of
+from windkit.study.reading import Reading, read_station
 from windkit.study.record import Record, build_record
-from windkit.study.stations import ChannelSettings, StationSettings
+from windkit.study.stations import ChannelSettings
+from windkit.study.turbine import read_curve
 from windkit.study.unit_slips import refuse_unit_slips
 
-__all__ = ["Measured", "examine_record", "load_record"]
+__all__ = ["Measured", "examine_record", "load_record", "read_references"]
 
-#: Recovery under which guidelines ask for a word [1]: Bailey et al. 1997 (id MEA-10, from memory).
-EXPECTED_RECOVERY = 0.9
 #: Exponent where only one height is measured [1]: the seventh-root law, common practice for flat
 #: open land; a warning goes with it.
 EXPONENT_WITHOUT_PROFILE = 1 / 7
-#: Fewest intervals for a turbulence figure of a speed bin, our choice.
-LEAST_IN_TURBULENCE_BIN = 6
-#: Normal quantile of the representative turbulence: the 90 % value of IEC 61400-1.
-_REPRESENTATIVE_QUANTILE = 1.28
-#: Fewest days of values for a month to be drawn, our choice.
-LEAST_DAYS_OF_MONTH = 5
-#: Least speed for a ratio of two cups [m/s]: below it starting speeds matter. Common practice.
-_LEAST_SPEED_FOR_RATIO = 4.0
-_DIRECTION_BIN = 10.0
-_MINUTES_PER_DAY = 24 * 60
-_MINUTES_PER_YEAR = 365.25 * _MINUTES_PER_DAY
+#: Sectors of the campaign's frequency table: twelve of 30 degrees, the default of the trade.
+SECTOR_COUNT = 12
+_MINUTES_PER_YEAR = 365.25 * 24 * 60
 
 
 @dataclass(frozen=True)
@@ -52,24 +50,34 @@ class Measured:
     ----------
     rows_table : DataFrame
         Rows of the files by what became of them.
+    counts : DataFrame
+        Intervals of each channel by what became of them, and recovery before and after masking.
+    checks : DataFrame
+        What each check found and whether it masks.
     spans : DataFrame
         The ledger: automatic spans first, then the decisions of people.
+    suspects : DataFrame
+        Spans of checks that mask nothing, the largest first.
+    worth : DataFrame
+        Mean speed and energy with and without each rule.
     recovery : DataFrame
         Share of believed values [1], one row a month, one column a mean channel.
     pair_ratio : DataFrame
         Ratio of the two cups at the main height by direction; empty without a second cup.
     booms : dict of str to float
         Boom bearings of those two cups [deg].
+    north, clock : DataFrame
+        Vanes against each other and the references [deg]; lag against the references [h].
     main_speed, main_direction : ndarray
-        Believed values of the main channels [m/s], [deg].
+        What the study stands on [m/s], [deg].
     frequency : FrequencyTable
-        Of the main channels.
+        Of these two.
     weibull : WeibullFit
         Of the main speed.
     diurnal, monthly : DataFrame
         Mean speeds by hour of the day (UTC) and by month [m/s].
     heights : DataFrame
-        Mean speed by height over the intervals all heights share [m/s].
+        Mean speed by height over the intervals all heights share, free of the mast [m/s].
     turbulence : DataFrame
         Turbulence intensity by speed: mean, representative, count.
     outcome : Outcome
@@ -77,10 +85,16 @@ class Measured:
     """
 
     rows_table: pd.DataFrame
+    counts: pd.DataFrame
+    checks: pd.DataFrame
     spans: pd.DataFrame
+    suspects: pd.DataFrame
+    worth: pd.DataFrame
     recovery: pd.DataFrame
     pair_ratio: pd.DataFrame
     booms: dict[str, float]
+    north: pd.DataFrame
+    clock: pd.DataFrame
     main_speed: NDArray[np.float64]
     main_direction: NDArray[np.float64]
     frequency: FrequencyTable
@@ -92,11 +106,22 @@ class Measured:
     outcome: Outcome
 
 
+def read_references(study: Study) -> list[Reading]:
+    """Every reference as read, for the checks of north and clock."""
+    return [read_station(reference, study.folder) for reference in study.settings.references]
+
+
 def load_record(study: Study) -> Record:
     """Read the mast's files, run the checks and apply the ledger."""
     reading = read_station(study.settings.mast, study.folder)
     refuse_unit_slips(reading)
-    return build_record(reading, study.settings.checks, read_ledger(study.ledger))
+    return build_record(
+        reading,
+        study.settings.checks,
+        read_ledger(study.ledger),
+        references=read_references(study),
+        elevation=study.settings.site.elevation_m,
+    )
 
 
 def examine_record(study: Study, record: Record) -> Measured:
@@ -105,302 +130,227 @@ def examine_record(study: Study, record: Record) -> Measured:
     Returns
     -------
     Measured
+
+    Raises
+    ------
+    StudyError
+        If the second cup that the study names is no pair of the main one.
     """
-    settings = study.settings.mast
+    settings, checks = study.settings.mast, study.settings.checks
     main = settings.channel(settings.main_wind_speed)
     frame = record.frame
     index = frame.index
     assert isinstance(index, pd.DatetimeIndex)
-    speed = frame[main.name].to_numpy()
-    direction = (
-        frame[settings.main_wind_direction].to_numpy()
-        if settings.main_wind_direction
-        else np.full(len(frame), np.nan)
-    )
-    speeds = settings.mean_speeds
-    names = [channel.name for channel in speeds]
-    monthly_mean = frame[main.name].groupby(index.month).mean()
-    recovery = _recovery(record, settings)
+    references = read_references(study)
+    free = free_of_shadow(record.reading, checks)
+    main_table, average, filled = _main_series(study, record)
+    speed = main_table["wind_speed"].to_numpy()
+    direction = main_table["wind_direction"].to_numpy()
+    names = [channel.name for channel in settings.mean_speeds]
+    by_month = campaign.monthly_means(main_table[["wind_speed"]], settings.interval_min)
+    by_month = by_month["wind_speed"].dropna()
     share = float(np.isfinite(speed).sum() / record.reading.expected_count)
-    heights = _heights(frame, speeds, main)
+    heights = campaign.heights_table(frame, main, settings, free)
     exponent, exponent_basis, warnings = _exponent(heights, main)
-    pair, booms = _pair_ratio(frame, settings, main)
-    turbulence = _turbulence(frame, settings, main)
+    pair, booms = _pair(record, study, main)
+    turbulence = campaign.turbulence_table(frame, main, settings, free[main.name])
     # A calm lies below the threshold, as where its direction is taken out; kernels include it.
     highest_calm = float(np.nextafter(settings.calm_below_m_s, 0.0))
     frequency = frequency_table(
-        speed,
-        direction,
-        sector_count=study.settings.long_term.sector_count,
-        calm_threshold=highest_calm,
+        speed, direction, sector_count=SECTOR_COUNT, calm_threshold=highest_calm
     )
     weibull = fit_weibull(speed, calm_threshold=highest_calm)
-    years = record.reading.expected_count * settings.interval_min / _MINUTES_PER_YEAR
-    plain, seasonal = float(np.nanmean(speed)), float(monthly_mean.mean())
-    if len(monthly_mean) < 12:
-        warnings.append(
-            f"The campaign covers {len(monthly_mean)} of 12 calendar months: its mean is not that "
-            "of a year."
-        )
-    elif abs(seasonal / plain - 1) > 0.01:
-        warnings.append(
-            f"The plain mean is {plain:.2f} m/s and the mean of calendar months {seasonal:.2f}: "
-            "months are represented unequally."
-        )
-    if share < EXPECTED_RECOVERY:
-        warnings.append(
-            f"Recovery of {main.name} is {share:.1%}; {EXPECTED_RECOVERY:.0%} is expected."
-        )
-    rows = [
-        Row(
-            "measured.mean_speed_m_s", "Mean wind speed of the campaign", plain, "m/s",
-            f"channel {main.name} at {main.height_m:g} m, believed values",
-        ),
-        Row(
-            "measured.mean_of_months_m_s", "Mean of calendar-month means", seasonal, "m/s",
-            f"{len(monthly_mean)} calendar months, each weighing the same",
-        ),
-        Row(
-            "measured.recovery", "Recovery", share, "1",
-            f"believed values of {main.name} over {record.reading.expected_count:,} intervals",
-            as_percent=True,
-        ),
-        Row(
-            "measured.years", "Length of the campaign", years, "years",
-            f"{index[0]:%Y-%m-%d} to {index[-1]:%Y-%m-%d}, UTC",
-        ),
-        Row("measured.height_m", "Height of the main channel", main.height_m, "m", "study.toml"),
-        Row("measured.channel", "Main channel", main.name, "", "study.toml"),
+    curve = read_curve(study)
+    worth = worth_of_checks(record, lambda v: power_at(curve, v))
+    north = campaign.north_table(record, references)
+    clock = campaign.clock_table(record, references)
+    plain, seasonal = float(np.nanmean(speed)), float(by_month.mean())
+    warnings += warnings_of(by_month, plain, seasonal, share, main, north, clock)
+    rows = _rows(study, record, main, main_table, average, filled)
+    rows += [
+        Row("measured.mean_of_months_m_s", "Mean of calendar-month means", seasonal, "m/s",
+            f"{len(by_month)} calendar months, each weighing the same"),
         Row("measured.shear_exponent", "Shear exponent", exponent, "1", exponent_basis),
-        Row(
-            "measured.calm_share", "Share of calms", frequency.calm_share, "1",
+        Row("measured.calm_share", "Share of calms", frequency.calm_share, "1",
             f"speed below {settings.calm_below_m_s:g} m/s; counted in every total",
-            as_percent=True,
-        ),
-        Row(
-            "measured.weibull_A_m_s", "Weibull scale A", weibull.weibull_scale, "m/s",
-            "maximum likelihood, calms as a point mass; for description, not for energy",
-        ),
+            as_percent=True),
+        Row("measured.weibull_A_m_s", "Weibull scale A", weibull.weibull_scale, "m/s",
+            "maximum likelihood, calms as a point mass; for description, not for energy"),
         Row("measured.weibull_k", "Weibull shape k", weibull.weibull_shape, "1", "same fit"),
     ]  # fmt: skip
     near_15 = turbulence[turbulence["wind_speed_m_s"] == 15.0]
     if len(near_15):
         rows.append(
-            Row(
-                "measured.turbulence_intensity_15", "Turbulence intensity at 15 m/s",
+            Row("measured.turbulence_intensity_15", "Turbulence intensity at 15 m/s",
                 float(near_15["mean"].iloc[0]), "1",
-                f"mean of {int(near_15['count'].iloc[0])} intervals of 14.5 to 15.5 m/s, no trend "
-                "removed", as_percent=True,
-            )
+                f"mean of {int(near_15['count'].iloc[0])} intervals of 14.5 to 15.5 m/s, free of "
+                "the mast, no trend removed", as_percent=True)
         )  # fmt: skip
-    rows_table = _rows_table(record)
-    spans = record.ledger.copy()
-    spans["from"] = spans["from"].dt.strftime("%Y-%m-%d %H:%M")
-    spans["to"] = spans["to"].dt.strftime("%Y-%m-%d %H:%M")
+    spans, suspects = _readable(record.ledger), _readable(record.suspects)
+    suspects = suspects.sort_values("count", ascending=False, ignore_index=True, kind="stable")
+    if average is not None:
+        # Averaging by direction has dealt with the mast's shadow already.
+        suspects = suspects[suspects["rule"] != "shadow"].reset_index(drop=True)
+    counts = campaign.channel_counts(record)
+    checks_found = campaign.checks_table(record, checks)
+    rows_by_fate = campaign.rows_table(record)
+    said = record_in_words(
+        record, main, share, pair, plain, seasonal, weibull, exponent, turbulence
+    )
+    said |= handling_in_words(average, filled, worth, north, clock, suspects)
     hour = index + pd.Timedelta(minutes=settings.interval_min / 2)
-    said = _said(record, main, share, pair, plain, seasonal, weibull, exponent, turbulence)
+    tables = {
+        "record": record.masked,
+        "main": main_table,
+        "rows": rows_by_fate,
+        "set_aside": record.reading.set_aside.astype(str),
+        "ledger": spans,
+        "suspects": suspects,
+        "checks": checks_found,
+        "worth": worth,
+        "counts": counts,
+        "recovery": record.recovery,
+        "heights": heights,
+        "turbulence": turbulence,
+        "north": north,
+        "clock": clock,
+        "thresholds": _thresholds(study),
+    }
     return Measured(
-        rows_table=rows_table,
+        rows_table=rows_by_fate,
+        counts=counts,
+        checks=checks_found,
         spans=spans,
-        recovery=recovery,
+        suspects=suspects,
+        worth=worth,
+        recovery=campaign.recovery_by_month(record),
         pair_ratio=pair,
         booms=booms,
+        north=north,
+        clock=clock,
         main_speed=speed,
         main_direction=direction,
         frequency=frequency,
         weibull=weibull,
         diurnal=frame[names].groupby(hour.hour).mean(),
-        monthly=_monthly(frame[names], index, settings.interval_min),
+        monthly=campaign.monthly_means(frame[names], settings.interval_min),
         heights=heights,
         turbulence=turbulence,
-        outcome=Outcome(
-            "measure",
-            rows,
-            {
-                "record": record.masked,
-                "rows": rows_table,
-                "set_aside": record.reading.set_aside.astype(str),
-                "ledger": spans,
-                "counts": record.counts,
-                "recovery": record.recovery,
-                "heights": heights,
-                "turbulence": turbulence,
-            },
-            said,
-            warnings,
-        ),
+        outcome=Outcome("measure", rows, tables, said, warnings),
     )
 
 
-def _recovery(record: Record, settings: StationSettings) -> pd.DataFrame:
-    """Months by channels, after masking, for the channels that hold means."""
-    means = [channel.name for channel in settings.channels if channel.statistic == "mean"]
-    table = record.recovery[record.recovery["channel"].isin(means)]
-    return table.pivot_table(index="month", columns="channel", values="after")[means]
+def _main_series(
+    study: Study, record: Record
+) -> tuple[pd.DataFrame, PairSpeed | None, FilledChannel | None]:
+    """The speed and direction the study stands on, and what each speed stands on.
 
-
-def _monthly(frame: pd.DataFrame, index: pd.DatetimeIndex, interval_min: float) -> pd.DataFrame:
-    """Mean by calendar month, where there are values for a few days of it at least."""
-    by_month = frame.groupby(index.month)
-    days = by_month.count() * interval_min / _MINUTES_PER_DAY
-    return by_month.mean().where(days >= LEAST_DAYS_OF_MONTH)
-
-
-def _rows_table(record: Record) -> pd.DataFrame:
-    reading = record.reading
-    rows = [("read from the files", reading.rows_read), ("kept", reading.rows_kept)]
-    rows += [
-        (f"set aside: {reason}", int(count))
-        for reason, count in reading.set_aside["reason"].value_counts().items()
-    ]
-    absent = reading.expected_count - reading.rows_kept
-    rows.append(("intervals between first and last without a row", absent))
-    return pd.DataFrame(rows, columns=["rows", "count"])
-
-
-def _heights(
-    frame: pd.DataFrame, speeds: list[ChannelSettings], main: ChannelSettings
-) -> pd.DataFrame:
-    """Mean speed by height over the intervals in which every height has a believed speed.
-
-    One cup a height: the main one at its own height, else the first that is declared.
+    Columns wind_speed [m/s], wind_direction [deg], basis (a channel, ``both``, or ``filled``).
     """
-    by_height: dict[float, ChannelSettings] = {main.height_m: main}
-    for channel in speeds:
-        by_height.setdefault(channel.height_m, channel)
-    chosen = [by_height[height] for height in sorted(by_height, reverse=True)]
-    shared = frame[[channel.name for channel in chosen]].dropna()
-    return pd.DataFrame(
-        {
-            "channel": [channel.name for channel in chosen],
-            "height_m": [channel.height_m for channel in chosen],
-            "mean_speed_m_s": shared.mean().to_numpy(),
-            "count": len(shared),
-        }
+    settings, choice = record.settings, study.settings.measured
+    main = settings.main_wind_speed
+    filled = fill_gaps(record, main) if choice.fill_gaps else None
+    speed = record.frame[main]
+    basis = pd.Series(np.where(speed.notna(), main, ""), index=speed.index)
+    average = None
+    if choice.main_pair is not None:
+        average = speed_of_pair(
+            record, main, choice.main_pair, check_settings=study.settings.checks
+        )
+        speed, basis = average.wind_speed, average.basis
+    direction = (
+        record.frame[settings.main_wind_direction]
+        if settings.main_wind_direction
+        else pd.Series(np.nan, index=speed.index)
     )
+    table = pd.DataFrame({"wind_speed": speed, "wind_direction": direction, "basis": basis})
+    if filled is not None:
+        table = table.reindex(filled.series.index)
+        gap = table["wind_speed"].isna() & filled.series.notna()
+        table["wind_speed"] = table["wind_speed"].where(~gap, filled.series)
+        table["basis"] = table["basis"].fillna("").where(~gap, "filled")
+    return table, average, filled
+
+
+def _rows(
+    study: Study,
+    record: Record,
+    main: ChannelSettings,
+    main_table: pd.DataFrame,
+    average: PairSpeed | None,
+    filled: FilledChannel | None,
+) -> list[Row]:
+    """The figures that say what the main speed is."""
+    speed = main_table["wind_speed"]
+    told = (
+        f"{main.name} and {study.settings.measured.main_pair}, averaged by direction"
+        if average is not None
+        else f"channel {main.name}"
+    )
+    told += f" at {main.height_m:g} m" + (", gaps filled" if filled is not None else "")
+    expected = record.reading.expected_count
+    days = expected * record.settings.interval_min
+    return [
+        Row("measured.mean_speed_m_s", "Mean wind speed of the campaign", float(speed.mean()),
+            "m/s", told),
+        Row("measured.recovery", "Recovery", float(speed.notna().sum() / expected), "1",
+            f"intervals with a believed speed out of {expected:,}", as_percent=True),
+        Row("measured.years", "Length of the campaign", days / _MINUTES_PER_YEAR, "years",
+            f"{record.frame.index[0]:%Y-%m-%d} to {record.frame.index[-1]:%Y-%m-%d}, UTC"),
+        Row("measured.height_m", "Height of the main channel", main.height_m, "m", "study.toml"),
+        Row("measured.channel", "Main channel", main.name, "", "study.toml"),
+    ]  # fmt: skip
 
 
 def _exponent(heights: pd.DataFrame, main: ChannelSettings) -> tuple[float, str, list[str]]:
     if len(heights) < 2 or not heights["count"].iloc[0]:
-        return (
-            EXPONENT_WITHOUT_PROFILE,
-            "assumed: the seventh-root law, common practice",
-            [
-                f"Speed is measured at {main.height_m:g} m only; the exponent of one seventh is an "
-                "assumption with a wide band. A second height would measure it."
-            ],
+        warning = (
+            f"Speed is measured at {main.height_m:g} m only; the exponent of one seventh is an "
+            "assumption with a wide band. A second height would measure it."
         )
+        return EXPONENT_WITHOUT_PROFILE, "assumed: seventh-root law, common practice", [warning]
     exponent = float(fit_shear(heights["mean_speed_m_s"], heights["height_m"]))
     told = ", ".join(f"{height:g}" for height in heights["height_m"])
-    return (
-        exponent,
-        (f"power law through the means at {told} m, {heights['count'].iloc[0]:,} shared intervals"),
-        [],
-    )
+    basis = f"power law through the means at {told} m, {heights['count'].iloc[0]:,} intervals"
+    return exponent, basis, []
 
 
-def _pair_ratio(
-    frame: pd.DataFrame, settings: StationSettings, main: ChannelSettings
+def _pair(
+    record: Record, study: Study, main: ChannelSettings
 ) -> tuple[pd.DataFrame, dict[str, float]]:
     """Main cup over the other at its height, by direction; empty if there is no other."""
     others = [
         channel
-        for channel in settings.mean_speeds
+        for channel in record.settings.mean_speeds
         if channel.height_m == main.height_m and channel.name != main.name
     ]
+    named = [channel for channel in others if channel.name == study.settings.measured.main_pair]
     empty = pd.DataFrame({"direction": [], "ratio": [], "count": []}, dtype=float)
-    if not others or settings.main_wind_direction is None:
+    if not others:
         return empty, {}
-    other = others[0]
-    both = frame[[main.name, other.name, settings.main_wind_direction]].dropna()
-    both = both[(both[main.name] >= _LEAST_SPEED_FOR_RATIO) & (both[other.name] > 0)]
-    bearing = both[settings.main_wind_direction]
-    centre = (np.round(bearing / _DIRECTION_BIN) * _DIRECTION_BIN) % 360
-    sums = both[[main.name, other.name]].groupby(centre).agg(["sum", "count"])
-    table = pd.DataFrame(
-        {
-            "direction": sums.index.to_numpy(dtype=float),
-            "ratio": (sums[(main.name, "sum")] / sums[(other.name, "sum")]).to_numpy(),
-            "count": sums[(main.name, "count")].to_numpy(),
-        }
-    )
+    other = (named or others)[0]
+    table = pair_ratio(record.reading, main, other).dropna(subset="ratio")
     booms = {
         channel.name: channel.boom_bearing_deg
         for channel in (main, other)
         if channel.boom_bearing_deg is not None
     }
-    return table, booms
+    return table if len(table) else empty, booms
 
 
-def _turbulence(
-    frame: pd.DataFrame, settings: StationSettings, main: ChannelSettings
-) -> pd.DataFrame:
-    """Standard deviation over mean by whole metre per second of the main channel."""
-    columns = ["wind_speed_m_s", "mean", "representative", "count"]
-    spread = next(
-        (
-            channel
-            for channel in settings.channels
-            if channel.quantity == "wind_speed"
-            and channel.statistic == "sd"
-            and channel.height_m == main.height_m
-            and channel.boom_bearing_deg == main.boom_bearing_deg
-        ),
-        None,
-    )
-    if spread is None:
-        return pd.DataFrame(columns=columns, dtype=float)
-    both = frame[[main.name, spread.name]].dropna()
-    both = both[both[main.name] >= 1.0]
-    intensity = both[spread.name] / both[main.name]
-    by_bin = intensity.groupby(np.floor(both[main.name] + 0.5))
-    table = pd.DataFrame({"mean": by_bin.mean(), "sd": by_bin.std(ddof=1), "count": by_bin.size()})
-    table = table[table["count"] >= LEAST_IN_TURBULENCE_BIN]
-    table["representative"] = table["mean"] + _REPRESENTATIVE_QUANTILE * table["sd"]
-    table.index.name = "wind_speed_m_s"
-    return table.reset_index()[columns]
+def _readable(spans: pd.DataFrame) -> pd.DataFrame:
+    """Spans with their stamps as text, to the minute, UTC."""
+    table = spans.copy()
+    for name in ("from", "to"):
+        table[name] = table[name].dt.strftime("%Y-%m-%d %H:%M")
+    return table
 
 
-def _said(
-    record: Record,
-    main: ChannelSettings,
-    share: float,
-    pair: pd.DataFrame,
-    plain: float,
-    seasonal: float,
-    weibull: WeibullFit,
-    exponent: float,
-    turbulence: pd.DataFrame,
-) -> dict[str, str]:
-    reading, ledger = record.reading, record.ledger
-    aside = len(reading.set_aside)
-    masked = record.counts.set_index("channel")["masked"]
-    people = int((ledger["who"] != AUTOMATIC).sum())
-    said = {
-        "rows": f"{reading.rows_read:,} rows were read: {reading.rows_kept:,} kept and {aside:,} "
-        f"set aside, which adds up. {reading.expected_count - reading.rows_kept:,} intervals "
-        "between the first and the last have no row.",
-        "spans": f"{len(ledger)} spans are in the ledger, {people} of them decided by people. They "
-        f"mask {int(masked[main.name]):,} values of {main.name}.",
-        "recovery": f"Recovery of {main.name} after masking is {share:.1%}.",
-        "climate": f"{main.name} has a mean of {plain:.2f} m/s, and {seasonal:.2f} m/s when each "
-        f"calendar month weighs the same. The Weibull shape is {weibull.weibull_shape:.2f}.",
-        "profile": f"The exponent of the power law is {exponent:.3f}."
-        + (
-            f" Turbulence intensity was found for {len(turbulence)} speed bins."
-            if len(turbulence)
-            else " No standard deviation was recorded beside the main cup, so turbulence is not "
-            "assessed."
-        ),
-        "pair": "There is no second cup at the main height, so the mast's own effect on the cup "
-        "cannot be seen in the data.",
-    }
-    if len(pair):
-        low = pair.iloc[int(pair["ratio"].to_numpy().argmin())]
-        high = pair.iloc[int(pair["ratio"].to_numpy().argmax())]
-        said["pair"] = (
-            f"The ratio is lowest with wind from {low['direction']:.0f}° "
-            f"({low['ratio']:.3f}), where {main.name} stands behind the mast, and highest from "
-            f"{high['direction']:.0f}° ({high['ratio']:.3f})."
-        )
-    return said
+def _thresholds(study: Study) -> pd.DataFrame:
+    """Every threshold of the checks with its value, source, and whether the study set it."""
+    checks = study.settings.checks
+    rows = [
+        (name, str(getattr(checks, name)), field.description or "", name in checks.model_fields_set)
+        for name, field in type(checks).model_fields.items()
+    ]
+    return pd.DataFrame(rows, columns=["threshold", "value", "source", "set_by_study"])

@@ -22,6 +22,7 @@ __all__ = [
     "PARAMETERS",
     "Parameter",
     "open_workbook",
+    "overrides_of",
     "parameters_of_cell",
     "refuse_unknown",
 ]
@@ -50,11 +51,15 @@ PARAMETERS: dict[str, dict[str, Parameter]] = {
     "2_measured_data": {
         "study_folder": _FOLDER,
         "main_wind_speed": Parameter("mast.main_wind_speed", "channel the study stands on"),
+        "main_pair": Parameter("measured.main_pair", "second cup, averaged with it by direction"),
+        "fill_gaps": Parameter("measured.fill_gaps", "fill gaps from the other sensors"),
     },
     "3_measure_correlate_predict": {
         "study_folder": _FOLDER,
+        "method": Parameter(
+            "long_term.method", "blend, ratio, linear_regression or variance_ratio"
+        ),
         "reference": Parameter("long_term.reference", "name of the reference"),
-        "method": Parameter("long_term.method", "ratio, linear_regression or variance_ratio"),
         "by_sector": Parameter("long_term.by_sector", "fit by direction sector"),
     },
     "4_energy_yield": {
@@ -98,7 +103,7 @@ def open_workbook(workbook: str, names: Mapping[str, Any]) -> Study:
     StudyError
         If a name is unknown or missing, or a value breaks its rule.
     """
-    known = PARAMETERS[step_of_workbook(workbook).workbook]
+    step_of_workbook(workbook)  # a name that is no workbook is refused
     given = {
         name: value
         for name, value in names.items()
@@ -112,15 +117,17 @@ def open_workbook(workbook: str, names: Mapping[str, Any]) -> Study:
             rule="the parameters cell says which study is meant",
             remedy="run the parameters cell first, with study_folder = '..' in a study's copy",
         )
-    overrides = {
-        known[name].overrides: value
-        for name, value in given.items()
-        if known[name].overrides is not None and value is not None
-    }
-    return open_study(
-        str(given["study_folder"]),
-        {key: overrides[key] for key in sorted(overrides, key=str) if key},
-    )
+    return open_study(str(given["study_folder"]), overrides_of(workbook, given))
+
+
+def overrides_of(workbook: str, values: Mapping[str, Any]) -> dict[str, Any]:
+    """Departures from `study.toml` that the values of a parameters cell ask for, by key."""
+    found = {}
+    for name, value in values.items():
+        key = PARAMETERS[workbook][name].overrides
+        if key is not None and value is not None:
+            found[key] = value
+    return dict(sorted(found.items()))
 
 
 def refuse_unknown(workbook: str, names: Mapping[str, Any]) -> None:

@@ -8,8 +8,6 @@ is judged or masked: that is for the checks and the ledger.
 
 from __future__ import annotations
 
-import hashlib
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -25,17 +23,12 @@ from windkit.study.stamps import interval_of, on_the_clock, read_stamps, to_star
 from windkit.study.stations import ChannelSettings, SensorPeriod, StationSettings
 from windkit.study.table_files import read_netcdf, read_parquet, read_sheet
 from windkit.study.text_files import RawTable, listed, read_text
-from windkit.study.text_source import refuse_too_large
 
 __all__ = ["Reading", "read_station"]
 
 #: Recorded bearings outside this range are no bearings; they are left for the range check to
 #: list instead of being wrapped into a plausible one [deg].
 _BEARINGS = (-180.0, 360.0)
-
-
-#: Endings of formats that are not text.
-_OWN_FORMAT = {".parquet", ".pq", ".xlsx", ".xlsm", ".nc", ".nc4", ".cdf"}
 
 
 @dataclass(frozen=True)
@@ -75,6 +68,17 @@ class Reading:
         """Length of the averaging interval."""
         return interval_of(self.settings)
 
+    @property
+    def absent(self) -> pd.DataFrame:
+        """Intervals that stand in no file, as spans ``from``, ``to`` (the end), ``count``."""
+        starts = self.frame.index.to_series()
+        steps = starts.diff()
+        after = starts[steps > self.interval]
+        before = starts.shift(1)[steps > self.interval] + self.interval
+        count = ((after - before) / self.interval).round().astype(int)
+        columns = {"from": before, "to": after, "count": count}
+        return pd.DataFrame(columns).reset_index(drop=True)
+
 
 def read_station(settings: StationSettings, folder: Path) -> Reading:
     """Read a station's files, convert them once and account for every row.
@@ -97,13 +101,8 @@ def read_station(settings: StationSettings, folder: Path) -> Reading:
         If a file, a column, a value or a stamp does not fit what is declared.
     """
     paths = {written: file_in_study(folder, written, key="files") for written in settings.files}
-    for written, path in paths.items():
-        if path.suffix.lower() not in _OWN_FORMAT:
-            refuse_too_large(path, written)  # before time is spent on its hash
-    with ThreadPoolExecutor(max_workers=1) as beside:
-        hashes = {written: beside.submit(_sha256, path) for written, path in paths.items()}
-        tables = [_read_table(path, written, settings) for written, path in paths.items()]
-        stamps = [read_stamps(table, settings) for table in tables]
+    tables = [_read_table(path, written, settings) for written, path in paths.items()]
+    stamps = [read_stamps(table, settings) for table in tables]
     local = np.concatenate(stamps)
     starts = np.cumsum([0, *(len(each) for each in stamps)])
 
@@ -143,15 +142,10 @@ def read_station(settings: StationSettings, folder: Path) -> Reading:
         rows_read=len(local) + sum(len(table.broken) for table in tables),
         rows_kept=len(frame),
         set_aside=set_aside,
-        sha256={written: task.result() for written, task in hashes.items()},
+        sha256={table.file: table.sha256 for table in tables},
         expected_count=int((frame.index[-1] - frame.index[0]) / interval_of(settings)) + 1,
         notes=tuple(note for table in tables for note in table.notes),
     )
-
-
-def _sha256(path: Path) -> str:
-    with path.open("rb") as stream:
-        return hashlib.file_digest(stream, "sha256").hexdigest()
 
 
 def _read_table(path: Path, written: str, settings: StationSettings) -> RawTable:

@@ -1,12 +1,11 @@
 """The checked record: a reading, masked through its ledger, with every value accounted for.
 
 Here checks, ledger and reading come together; the record can be replayed from the reading and
-the ledger alone. Hourly means and recovery are taken here. The checks themselves are in `checks`.
+the ledger alone. Recovery is counted here; hourly means are in `hourly`, the checks in `checks`.
 """
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -14,12 +13,18 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from windkit.kernels.circular import mean_direction
 from windkit.study.checks import CheckSettings, run_checks
 from windkit.study.errors import StudyError
-from windkit.study.ledger import AUTOMATIC, apply_ledger, empty_ledger, human_rows, ledger_of
+from windkit.study.hourly import (
+    LEAST_SHARE_OF_HOUR,
+    calm_hours,
+    hourly_means,
+    hourly_weighted_directions,
+    without_calm_directions,
+)
+from windkit.study.ledger import ALL, AUTOMATIC, apply_ledger, empty_ledger, human_rows, ledger_of
 from windkit.study.reading import Reading
-from windkit.study.stations import ChannelSettings, StationSettings
+from windkit.study.stations import StationSettings
 
 __all__ = [
     "LEAST_SHARE_OF_HOUR",
@@ -28,13 +33,10 @@ __all__ = [
     "build_record",
     "calm_hours",
     "hourly_means",
+    "hourly_weighted_directions",
     "replay",
     "without_calm_directions",
 ]
-
-#: Least share of an hour's intervals that an hourly mean stands on: five of six ten-minute
-#: values (common practice).
-LEAST_SHARE_OF_HOUR = 5 / 6
 
 
 @dataclass(frozen=True)
@@ -88,9 +90,16 @@ class Record:
 
     @property
     def suspects(self) -> pd.DataFrame:
-        """Spans of checks that mask nothing, waiting for a person's decision."""
+        """Spans of checks that mask nothing and that no person has decided on."""
         automatic = set(self.ledger.loc[self.ledger["who"] == AUTOMATIC, "rule"])
-        return self.spans[~self.spans["rule"].isin(automatic)].reset_index(drop=True)
+        left = self.spans[~self.spans["rule"].isin(automatic)].reset_index(drop=True)
+        waiting = pd.Series(True, index=left.index)
+        for row in human_rows(self.ledger).to_dict("records"):
+            decided = left["rule"].isin([row["rule"]]) if row["rule"] != ALL else True
+            if row["channel"] != ALL:
+                decided &= left["channel"] == row["channel"]
+            waiting &= ~(decided & (left["from"] >= row["from"]) & (left["to"] <= row["to"]))
+        return left[waiting].reset_index(drop=True)
 
     def hourly(self, min_share: float = LEAST_SHARE_OF_HOUR) -> pd.DataFrame:
         """Hourly values; see `hourly_means`."""
@@ -182,141 +191,34 @@ def replay(reading: Reading, ledger: pd.DataFrame) -> pd.DataFrame:
     return without_calm_directions(apply_ledger(reading.frame, ledger), reading.settings)
 
 
-def calm_hours(
-    frame: pd.DataFrame, direction: ChannelSettings, settings: StationSettings
-) -> NDArray[np.bool_]:
-    """Intervals that are calm where a vane hangs.
-
-    Parameters
-    ----------
-    frame : DataFrame
-        Channels of the station.
-    direction : ChannelSettings
-        The vane's channel; the mean speed nearest in height decides.
-    settings : StationSettings
-        The calm rule.
-
-    Returns
-    -------
-    ndarray of bool
-        True where that speed is below ``calm_below_m_s``; a missing speed is not calm.
-    """
-    speeds = settings.mean_speeds
-    nearest = min(speeds, key=lambda speed: abs(speed.height_m - direction.height_m))
-    calm: NDArray[np.bool_] = frame[nearest.name].to_numpy() < settings.calm_below_m_s
-    return calm
-
-
-def without_calm_directions(frame: pd.DataFrame, settings: StationSettings) -> pd.DataFrame:
-    """The frame with directions of calms taken out: a calm has none, and still counts."""
-    out = frame.copy()
-    for channel in settings.channels:
-        if channel.is_direction:
-            out.loc[calm_hours(frame, channel, settings), channel.name] = np.nan
-    return out
-
-
-def hourly_means(
-    frame: pd.DataFrame, settings: StationSettings, *, min_share: float = LEAST_SHARE_OF_HOUR
-) -> pd.DataFrame:
-    """Hourly values from a frame of shorter intervals.
-
-    Parameters
-    ----------
-    frame : DataFrame
-        Channels on starts of intervals, masked; directions of calms still in.
-    settings : StationSettings
-        Interval, calm rule, and what each channel holds.
-    min_share : float
-        Least share of an hour's intervals that must have a value [1].
-
-    Returns
-    -------
-    DataFrame
-        Channels on every hour from first to last, NaN where too few values stand. Means are
-        means; a spread is the root of the mean square (the spread between the intervals is
-        left out); extremes are extremes; a direction is the mean of unit vectors, each interval
-        equal, over intervals that are not calm.
-
-    Raises
-    ------
-    StudyError
-        If `min_share` is not a share, or an hour is not a whole number of intervals.
-
-    Notes
-    -----
-    An interval belongs to the hour its middle lies in. A calm counts as observed when the share
-    of a direction is taken. Intervals of one hour keep their value; longer ones are refused.
-    """
-    if not 0 < min_share <= 1:
-        raise StudyError.of(
-            key="samples_per_hour_share",
-            met=f"the share is {min_share:g}",
-            rule="it is above 0 and no more than 1",
-            remedy="write 0.8333 for five of six intervals",
-        )
-    per_hour = round(60.0 / settings.interval_min)
-    if not math.isclose(per_hour * settings.interval_min, 60.0, rel_tol=1e-9):
-        raise StudyError.of(
-            key="interval_min",
-            met=f"{settings.name}: intervals last {settings.interval_min:g} minutes",
-            rule="an hourly mean needs a whole number of intervals in an hour",
-            remedy="use the record at its own interval",
-        )
-    assert isinstance(frame.index, pd.DatetimeIndex)
-    half = pd.Timedelta(minutes=settings.interval_min / 2)
-    hour = pd.Timedelta(hours=1)
-    middles = frame.index + half
-    first, last = middles[0].floor("h"), middles[-1].floor("h")
-    hours = pd.date_range(first, last, freq="h", name="time").as_unit("ns")
-    at = ((middles - first) // hour).to_numpy().astype(np.intp)
-    slot = ((middles - first - at * hour) // (2 * half)).to_numpy().astype(np.intp)
-    needed = math.ceil(min_share * per_hour - 1e-3)  # 0.8333 of six is five
-    columns = {}
-    for channel in settings.channels:
-        grid = np.full((len(hours), per_hour), np.nan)
-        grid[at, slot] = frame[channel.name].to_numpy()
-        observed = np.isfinite(grid).sum(axis=1)
-        if channel.is_direction:
-            calm = np.zeros((len(hours), per_hour), dtype=bool)
-            calm[at, slot] = calm_hours(frame, channel, settings)
-            grid[calm] = np.nan
-        enough = (observed >= needed) & np.isfinite(grid).any(axis=1)
-        values = np.full(len(hours), np.nan)
-        values[enough] = _of_each_hour(grid[enough], channel)
-        columns[channel.name] = values
-    return pd.DataFrame(columns, index=hours)
-
-
-def _of_each_hour(grid: NDArray[np.float64], channel: ChannelSettings) -> NDArray[np.float64]:
-    if channel.is_direction:
-        return mean_direction(grid, axis=1)
-    if channel.statistic == "sd":
-        return np.sqrt(np.nanmean(grid**2, axis=1))
-    if channel.statistic == "max" or channel.quantity == "wind_speed_of_gust":
-        return np.nanmax(grid, axis=1)
-    if channel.statistic == "min":
-        return np.nanmin(grid, axis=1)
-    return np.nanmean(grid, axis=1)
-
-
 def _recovery(reading: Reading, masked: pd.DataFrame) -> pd.DataFrame:
     """Shares of expected intervals by channel and calendar month (UTC)."""
-    first, last = reading.frame.index[0], reading.frame.index[-1]
-    grid = pd.date_range(first, last, freq=reading.interval)
-    expected = pd.Series(1, index=grid.strftime("%Y-%m")).groupby(level=0).sum()
-    month = reading.frame.index.strftime("%Y-%m")  # type: ignore[attr-defined]
-    before = reading.frame.notna().groupby(month).sum().reindex(expected.index, fill_value=0)
-    after = masked.notna().groupby(month).sum().reindex(expected.index, fill_value=0)
+    index = reading.frame.index
+    assert isinstance(index, pd.DatetimeIndex)
+    grid = pd.date_range(index[0], index[-1], freq=reading.interval)
+    start = index[0].year * 12 + index[0].month - 1
+
+    def months(stamps: pd.DatetimeIndex) -> NDArray[np.int64]:
+        return np.asarray(stamps.year * 12 + stamps.month - 1 - start, dtype=np.int64)
+
+    expected = np.bincount(months(grid))
+    at = months(index)
+
+    def share(values: pd.Series) -> NDArray[np.float64]:
+        known = np.isfinite(values.to_numpy())
+        counts = np.bincount(at[known], minlength=len(expected))
+        return np.divide(counts, expected, out=np.zeros(len(expected)), where=expected > 0)
+
+    labels = [f"{(start + n) // 12:04d}-{(start + n) % 12 + 1:02d}" for n in range(len(expected))]
     tables = [
         pd.DataFrame(
             {
                 "channel": channel.name,
                 "height": channel.height_m,
-                "month": expected.index,
-                "expected": expected.to_numpy(),
-                "before": (before[channel.name] / expected).to_numpy(),
-                "after": (after[channel.name] / expected).to_numpy(),
+                "month": labels,
+                "expected": expected,
+                "before": share(reading.frame[channel.name]),
+                "after": share(masked[channel.name]),
             }
         )
         for channel in reading.settings.channels

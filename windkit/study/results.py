@@ -67,7 +67,7 @@ class Results(_Part):
     """What `results.json` holds at least."""
 
     results_schema_version: int
-    windkit_version: str
+    software_version: str
     study: dict[str, Any]
     departures: dict[str, dict[str, Any]]
     measured: _Measured
@@ -93,7 +93,7 @@ def collect_results(study: Study) -> tuple[dict[str, Any], dict[str, Outcome]]:
     identity = study.settings.study.model_dump(mode="json")
     results: dict[str, Any] = {
         "results_schema_version": RESULTS_SCHEMA_VERSION,
-        "windkit_version": windkit.__version__,
+        "software_version": windkit.__version__,
         "study": {**identity, "site": study.settings.site.name},
         # A parameter set in a workbook outranks study.toml; a reader must see that it did.
         "departures": {name: a.overrides for name, a in artifacts.items() if a.overrides},

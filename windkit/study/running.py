@@ -9,8 +9,10 @@ never written to.
 from __future__ import annotations
 
 import copy
+import json
 import os
-from collections.abc import Callable, Mapping
+import re
+from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -20,9 +22,11 @@ from windkit.study.artifacts import first_stale_step, load_artifact
 from windkit.study.errors import StudyError
 from windkit.study.folder import Study, open_study
 from windkit.study.ledger import masked_by, read_ledger
+from windkit.study.long_term_lines import refuse_thin_overlap
 from windkit.study.parameters import (
     PARAMETERS,
     open_workbook,
+    overrides_of,
     parameters_of_cell,
     refuse_unknown,
 )
@@ -39,6 +43,9 @@ PARAMETERS_TAG = "parameters"
 
 #: Longest time one cell may take [s]; a kernel that died would otherwise hang the run.
 _CELL_TIMEOUT = 900
+
+#: How a running kernel names the parts of a panel.
+_MODEL_ID = re.compile(r"[0-9a-f]{32}")
 
 Progress = Callable[[str, int, int], None]
 Parameters = Mapping[str, Mapping[str, Any]]
@@ -62,7 +69,14 @@ def check_inputs(study: Study) -> None:
     masked_by(mast.frame.iloc[:0], read_ledger(study.ledger))  # its channels, before its spans
     refuse_unit_slips(mast)
     for station in settings.references:
-        refuse_unit_slips(read_station(station, study.folder))
+        reading = read_station(station, study.folder)
+        refuse_unit_slips(reading)
+        if settings.long_term.reference in (None, station.name):
+            refuse_thin_overlap(
+                mast.frame[settings.mast.main_wind_speed],
+                reading.frame[station.main_wind_speed],
+                station.name,
+            )
 
 
 def run_study(
@@ -117,6 +131,7 @@ def run_study(
     for step in steps:
         _check_parameters(study, step, notebooks[step.name], given.get(step.workbook, {}))
     _refuse_stale_before(study, steps[0])
+    _refuse_other_parameters(study, STEPS[: STEPS.index(steps[0])])
     check_inputs(study)
     for step in steps:
         _execute(study, step, notebooks[step.name], given.get(step.workbook, {}), progress)
@@ -147,6 +162,31 @@ def _refuse_stale_before(study: Study, first: Step) -> None:
             rule="each step stands on those before it",
             remedy=f"run `sitestudy run {study.folder.name} --from {stale}`",
         )
+
+
+def _refuse_other_parameters(study: Study, before: Sequence[Step]) -> None:
+    """Refuse to build upon a step that was run with parameters its workbook does not hold now."""
+    for step in before:
+        asked = overrides_of(step.workbook, _parameters_of(step, _read_workbook(study, step)))
+        made_with = load_artifact(study, step.name).overrides
+        if made_with != asked:
+            raise StudyError.of(
+                file=f"results/{step.name}",
+                met=f"it was made with {_listed(made_with)}, but its workbook now asks for "
+                f"{_listed(asked)}",
+                rule="a value set for one run is not carried into the next unseen",
+                remedy=f"run `sitestudy run {study.folder.name} --from {step.name}`, with the "
+                "same --set if it is meant",
+            )
+
+
+def _listed(overrides: Mapping[str, Any]) -> str:
+    return ", ".join(f"{key} = {value!r}" for key, value in overrides.items()) or "study.toml alone"
+
+
+def _parameters_of(step: Step, notebook: nbformat.NotebookNode) -> dict[str, Any]:
+    cell = next(c for c in notebook.cells if PARAMETERS_TAG in c.metadata.get("tags", []))
+    return parameters_of_cell(step.workbook, cell.source)
 
 
 def _read_workbook(study: Study, step: Step) -> nbformat.NotebookNode:
@@ -183,8 +223,7 @@ def _check_parameters(
     study: Study, step: Step, notebook: nbformat.NotebookNode, given: Mapping[str, Any]
 ) -> None:
     """Open the study as the workbook will, so that a wrong value shows before anything runs."""
-    cell = next(c for c in notebook.cells if PARAMETERS_TAG in c.metadata.get("tags", []))
-    values = {**parameters_of_cell(step.workbook, cell.source), **given}
+    values = {**_parameters_of(step, notebook), **given}
     file, named = f"workbooks/{step.workbook}.ipynb", values.get("study_folder")
     if named is None or (study.folder / "workbooks" / str(named)).resolve() != study.folder:
         raise StudyError.of(
@@ -268,9 +307,34 @@ def _inject(notebook: nbformat.NotebookNode, values: Mapping[str, Any]) -> None:
     notebook.cells.insert(place + 1, cell)
 
 
+def _with_settled_ids(notebook: nbformat.NotebookNode) -> str:
+    """The notebook as text, the random ids of its panels replaced by numbers.
+
+    Numbers go along the references from what is shown, so that they do not depend on the ids.
+    """
+    widgets = notebook.metadata.get("widgets", {})
+    models = {name: json.dumps(m) for w in widgets.values() for name, m in w["state"].items()}
+    text = nbformat.writes(notebook)
+    found: dict[str, None] = {}
+
+    def follow(inside: str) -> None:
+        for name in _MODEL_ID.findall(inside):
+            if name in models and name not in found:
+                found[name] = None
+                follow(models[name])
+
+    follow(json.dumps([cell.get("outputs", []) for cell in notebook.cells]))
+    for number, name in enumerate([*found, *sorted(set(models) - set(found))]):
+        text = text.replace(name, f"panel-{number:04d}")
+    settled = nbformat.reads(text, as_version=4)
+    for widget in settled.metadata.get("widgets", {}).values():
+        widget["state"] = dict(sorted(widget["state"].items()))
+    return str(nbformat.writes(settled)) + "\n"
+
+
 def _write(file: Path, notebook: nbformat.NotebookNode) -> Path:
     file.parent.mkdir(parents=True, exist_ok=True)
     part = file.with_suffix(".part")
-    nbformat.write(notebook, part)
+    part.write_text(_with_settled_ids(notebook), encoding="utf-8")
     os.replace(part, file)
     return file

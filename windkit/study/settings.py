@@ -37,6 +37,7 @@ __all__ = [
     "UNCERTAINTY_GROUPS",
     "LongTermSettings",
     "LossSettings",
+    "MeasuredSettings",
     "ReferenceSettings",
     "ScreeningSettings",
     "Settings",
@@ -52,6 +53,8 @@ __all__ = [
 
 SETTINGS_FILE = "study.toml"
 SCHEMA_VERSION = 1
+#: How the template marks a text that a person must write.
+FILL_IN = "FILL IN"
 
 #: Groups of the open IEC 61400-15-2 draft, in its order; `plant_performance` is on energy.
 UNCERTAINTY_GROUPS = (
@@ -156,11 +159,18 @@ class ReferenceSettings(StationSettings):
     elevation_m: float | None = Field(default=None, ge=-430, le=6000)
 
 
+class MeasuredSettings(_Section):
+    """How the speed that the study stands on is made from the mast's sensors."""
+
+    main_pair: str | None = None
+    fill_gaps: bool = False
+
+
 class LongTermSettings(_Section):
     """How the campaign is carried to the long term."""
 
-    reference: str = Field(min_length=1)
-    method: Literal["ratio", "linear_regression", "variance_ratio"] = "variance_ratio"
+    method: Literal["blend", "ratio", "linear_regression", "variance_ratio"] = "blend"
+    reference: str | None = None
     by_sector: bool = True
     sector_count: int = Field(default=12, ge=4, le=36)
     min_hours_per_sector: int = Field(default=200, ge=20)
@@ -267,6 +277,7 @@ class Settings(_Section):
     mast: StationSettings
     references: list[ReferenceSettings] = Field(min_length=1)
     checks: CheckSettings = Field(default_factory=CheckSettings)
+    measured: MeasuredSettings = MeasuredSettings()
     long_term: LongTermSettings
     profile: ProfileSettings = Field(default_factory=ProfileSettings)
     turbine: TurbineSettings
@@ -280,7 +291,13 @@ class Settings(_Section):
         names = [reference.name for reference in self.references]
         _refuse_repeats(names, "references")
         _refuse_repeats([position.name for position in self.layout], "layout")
-        if self.long_term.reference not in names:
+        chosen = self.long_term.reference
+        if chosen is None and self.long_term.method != "blend":
+            raise ValueError(
+                f"[long_term] method is '{self.long_term.method}', which stands on one reference; "
+                f"name it: reference = one of {', '.join(names)}"
+            )
+        if chosen is not None and chosen not in names:
             raise ValueError(
                 f"[long_term] reference is '{self.long_term.reference}', but the references are "
                 f"{', '.join(names)}; write one of these names"
@@ -338,14 +355,30 @@ def with_overrides(values: Mapping[str, Any], overrides: Mapping[str, Any]) -> d
     return merged
 
 
+def _left_from_template(value: Any, path: str = "") -> list[str]:
+    """Keys whose text is still that of the template."""
+    if isinstance(value, Mapping):
+        return [key for k, v in value.items() for key in _left_from_template(v, f"{path}.{k}")]
+    if isinstance(value, list):
+        return [
+            key for i, v in enumerate(value) for key in _left_from_template(v, f"{path}[{i + 1}]")
+        ]
+    return [path.lstrip(".")] if isinstance(value, str) and value.startswith(FILL_IN) else []
+
+
 def parse_settings(values: Mapping[str, Any], *, file: str = SETTINGS_FILE) -> Settings:
     """Validate plain values; every fault found is named with key, value, rule and remedy."""
+    blanks = [
+        f"{key}: still the template's text; write your own" for key in _left_from_template(values)
+    ]
+    faults: list[str] = []
     try:
-        return Settings.model_validate(values)
+        settings = Settings.model_validate(values)
     except ValidationError as error:
         faults = [_explain(fault) for fault in error.errors()]
-        shown = faults[:8] + ([f"... and {len(faults) - 8} more"] if len(faults) > 8 else [])
-        raise StudyError("\n".join(f"{file}: {fault}" for fault in shown)) from None
+    if blanks or faults:
+        raise StudyError("\n".join(f"{file}: {fault}" for fault in [*blanks, *faults]))
+    return settings
 
 
 def _explain(fault: Any) -> str:
@@ -356,7 +389,10 @@ def _explain(fault: Any) -> str:
     rule, kind = fault["msg"].removeprefix("Value error, "), fault["type"]
     rule = rule.replace("Input should", "it must", 1)
     if kind == "missing":
-        return f"{key}: not given; the key is required and never guessed; add a line for it"
+        return (
+            f"{key}: not given; the key is required and never guessed; add a line for it, or take "
+            "the mark # REQUIRED off the template's"
+        )
     if kind == "extra_forbidden":
         near = difflib.get_close_matches(str(fault["loc"][-1]), _keys_beside(fault["loc"]), n=1)
         remedy = f"write {near[0]} if that is meant" if near else "mend or remove it"

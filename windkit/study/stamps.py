@@ -67,6 +67,8 @@ def read_stamps(table: RawTable, settings: StationSettings) -> Stamps:
     stamps = table.stamps
     if pa.types.is_timestamp(stamps.type):
         local = _typed(table, settings)
+    elif settings.time_format is None and (plain := _plain_iso(stamps)) is not None:
+        local = plain
     else:
         stamps = pc.utf8_trim_whitespace(stamps)
         time_format = settings.time_format
@@ -122,13 +124,21 @@ def _typed(table: RawTable, settings: StationSettings) -> Stamps:
 _NAT = np.iinfo(np.int64).min
 
 
+def _plain_iso(stamps: pa.Array) -> Stamps | None:
+    """ISO 8601 stamps without a zone, by far the fastest way; None if any is otherwise."""
+    try:
+        cast = pc.cast(stamps, pa.timestamp("us"))
+    except pa.ArrowInvalid:
+        return None
+    return np.asarray(cast.cast(pa.int64()).fill_null(_NAT)).view("datetime64[us]")
+
+
 def _parsed(stamps: pa.Array, time_format: str | None) -> Stamps:
     if time_format is None:
-        try:
-            cast = pc.cast(stamps, pa.timestamp("us"))
-            return np.asarray(cast.cast(pa.int64()).fill_null(_NAT)).view("datetime64[us]")
-        except pa.ArrowInvalid:
-            time_format = "ISO8601"
+        plain = _plain_iso(stamps)
+        if plain is not None:
+            return plain
+        time_format = "ISO8601"
     text = pd.Series(stamps.to_pandas(), dtype=object)
     parsed = pd.to_datetime(text, format=time_format, errors="coerce")
     if not pd.api.types.is_datetime64_dtype(parsed.dtype):

@@ -27,7 +27,7 @@ class Step:
     title : str
         Heading in the report.
     sections : tuple of str
-        Tables of `study.toml` it reads.
+        Tables of `study.toml` it reads, or single keys of them as ``table.key``.
     needs : tuple of str
         Steps whose artifacts it builds upon.
     """
@@ -41,7 +41,21 @@ class Step:
 
 STEPS: tuple[Step, ...] = (
     Step("screen", "1_site_screening", "Site screening", ("site", "screening", "turbine")),
-    Step("measure", "2_measured_data", "Measured data", ("site", "mast", "checks")),
+    Step(
+        "measure",
+        "2_measured_data",
+        "Measured data",
+        (
+            "site",
+            "mast",
+            "references",
+            "checks",
+            "measured",
+            "turbine.curve_file",
+            "turbine.curve_air_density_kg_m3",
+            "turbine.cut_out_m_s",
+        ),
+    ),
     Step(
         "long_term",
         "3_measure_correlate_predict",
@@ -100,11 +114,11 @@ def step_of_workbook(workbook: str) -> Step:
 def files_of(study: Study, step: Step) -> dict[str, str]:
     """The files a step reads: name as written in the settings, and the key it stands under."""
     settings, files = study.settings, {}
-    if "turbine" in step.sections:
+    if {"turbine", "turbine.curve_file"} & set(step.sections):
         files[settings.turbine.curve_file] = "turbine.curve_file"
     if step.name == "measure":
         files |= dict.fromkeys(settings.mast.files, "mast.files")
-    if step.name == "long_term":
+    if "references" in step.sections:
         for reference in settings.references:
             files |= dict.fromkeys(reference.files, f"references ({reference.name}).files")
     return files

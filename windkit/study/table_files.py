@@ -7,6 +7,8 @@ says is held against what the study declares; nothing is converted here.
 from __future__ import annotations
 
 import datetime as dt
+import hashlib
+import importlib
 import re
 from collections.abc import Callable, Sequence
 from pathlib import Path
@@ -28,7 +30,7 @@ from windkit.study.text_files import (
     number_in,
 )
 
-__all__ = ["read_netcdf", "read_parquet", "read_sheet"]
+__all__ = ["file_hash", "read_netcdf", "read_parquet", "read_sheet"]
 
 Values = NDArray[np.float64]
 
@@ -36,6 +38,12 @@ Values = NDArray[np.float64]
 _CF_SECONDS = {"s": 1, "sec": 1, "second": 1, "min": 60, "minute": 60, "h": 3600, "hr": 3600}
 _CF_SECONDS |= {"hour": 3600, "d": 86400, "day": 86400}
 _CF_CALENDARS = {"standard", "gregorian", "proleptic_gregorian"}
+
+
+def file_hash(path: Path) -> str:
+    """SHA-256 of a file as sent."""
+    with path.open("rb") as stream:
+        return hashlib.file_digest(stream, "sha256").hexdigest()
 
 
 def read_parquet(path: Path, written: str, settings: StationSettings) -> RawTable:
@@ -100,7 +108,7 @@ def read_parquet(path: Path, written: str, settings: StationSettings) -> RawTabl
             )
         columns[name] = values
     rows = np.arange(1, len(table) + 1, dtype=np.int64)
-    return RawTable(written, stamps, columns, lambda: rows, unit_of_rows="row")
+    return RawTable(written, file_hash(path), stamps, columns, lambda: rows, unit_of_rows="row")
 
 
 def _finite(values: Values, written: str, name: str) -> Values:
@@ -197,7 +205,7 @@ def read_sheet(path: Path, written: str, settings: StationSettings) -> RawTable:
         )
     lines = np.array([number for number, _ in body], dtype=np.int64)
     stamps = _sheet_stamps([cells[0] for _, cells in body], lines, written)
-    return RawTable(written, stamps, columns, lambda: lines, unit_of_rows="row")
+    return RawTable(written, file_hash(path), stamps, columns, lambda: lines, unit_of_rows="row")
 
 
 def _cell(cell: Any, settings: StationSettings) -> float | None:
@@ -287,7 +295,15 @@ def read_netcdf(path: Path, written: str, settings: StationSettings) -> RawTable
     finally:
         close()
     rows = np.arange(1, len(stamps) + 1, dtype=np.int64)
-    return RawTable(written, stamps, columns, lambda: rows, unit_of_rows="row", notes=tuple(notes))
+    return RawTable(
+        written,
+        file_hash(path),
+        stamps,
+        columns,
+        lambda: rows,
+        unit_of_rows="row",
+        notes=tuple(notes),
+    )
 
 
 def _open_netcdf(path: Path, written: str) -> tuple[dict[str, Any], Callable[[], None]]:
@@ -300,9 +316,7 @@ def _open_netcdf(path: Path, written: str) -> tuple[dict[str, Any], Callable[[],
             old = netcdf_file(path, "r", mmap=False)
             return dict(old.variables), old.close
         if magic == b"\x89HDF":
-            import h5netcdf
-
-            new = h5netcdf.File(path, "r")
+            new = importlib.import_module("h5netcdf").File(path, "r")  # optional package
             return dict(new.variables), new.close
     except ImportError as error:
         raise StudyError.of(

@@ -38,6 +38,8 @@ class RawTable:
     ----------
     file : str
         Path as written in the settings.
+    sha256 : str
+        Hash of the file as sent.
     stamps : pa.Array
         One stamp per row: text, or timestamps where the file has a type for them.
     columns : dict of str to ndarray
@@ -53,6 +55,7 @@ class RawTable:
     """
 
     file: str
+    sha256: str
     stamps: pa.Array
     columns: dict[str, NDArray[np.float64]]
     line_numbers: Callable[[], NDArray[np.int64]]
@@ -83,21 +86,22 @@ def read_text(path: Path, written: str, settings: StationSettings) -> RawTable:
     _check_columns(source, names, wanted, settings)
     positions = [names.index(name) for name in wanted]
     frame = _read_fast(source, len(names), positions, settings)
+    source.refuse_damage()
     if frame is None:
         return _read_slow(source, len(names), positions, wanted, settings)
 
     def lines() -> NDArray[np.int64]:
         return np.array([line for line, _ in source.rows(settings)], dtype=np.int64)
 
-    stamps = pa.array(frame[positions[0]], type=pa.string(), from_pandas=False)
+    stamps = pa.array(frame[positions[0]].fillna(""), type=pa.string())
     numbers = missing_numbers(settings)
     columns = {}
     for name, at in zip(wanted[1:], positions[1:], strict=True):
-        values = frame[at].to_numpy()
+        values = frame[at].to_numpy(dtype=np.float64)
         for number in numbers:
             values = np.where(values == number, np.nan, values)
         columns[name] = values
-    return RawTable(written, stamps, columns, lines, notes=source.notes)
+    return RawTable(written, source.sha256, stamps, columns, lines, notes=source.notes)
 
 
 def _check_columns(
@@ -185,8 +189,7 @@ def _read_fast(
             header=None,
             skiprows=source.first_line - 1 if source.held is None else 0,
             usecols=few,
-            dtype=dict.fromkeys(positions[1:], np.float64),
-            na_values={at: ["", *texts] for at in positions[1:]},
+            na_values=["", *texts],
             keep_default_na=False,
             encoding="utf-8",
             compression=None,
@@ -199,8 +202,12 @@ def _read_fast(
         pd.errors.ParserError,
     ):  # empty, odd texts, long rows
         return None
+    if frame.columns.isin(positions).sum() != len(positions):
+        return None  # rows are shorter than the header
     if not pd.api.types.is_string_dtype(frame[positions[0]].dtype):
         return None  # stamps such as 20260101 come as numbers
+    if any(frame[at].dtype.kind not in "fi" for at in positions[1:]):
+        return None  # texts among the numbers
     if source.delimiters != len(frame) * (width - 1):
         return None  # short rows are filled up silently, quoted delimiters count twice
     if any(np.isinf(frame[at].to_numpy()).any() for at in positions[1:]):
@@ -239,7 +246,9 @@ def _read_slow(
     columns = _numbers(rows, lines, wanted, source.file, settings)
     stamps = pa.array([row[0] for row in rows], type=pa.string())
     numbered = np.asarray(lines, dtype=np.int64)
-    return RawTable(source.file, stamps, columns, lambda: numbered, broken, notes=source.notes)
+    return RawTable(
+        source.file, source.sha256, stamps, columns, lambda: numbered, broken, notes=source.notes
+    )
 
 
 def _numbers(

@@ -10,10 +10,12 @@ from __future__ import annotations
 import codecs
 import csv
 import gzip
+import hashlib
 import io
 import zipfile
 import zlib
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
+from concurrent.futures import Future, ThreadPoolExecutor
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
@@ -23,7 +25,7 @@ import numpy as np
 from windkit.study.errors import StudyError
 from windkit.study.stations import StationSettings
 
-__all__ = ["LARGEST_TEXT", "TextSource", "open_text", "refuse_too_large", "split_fields"]
+__all__ = ["LARGEST_TEXT", "Look", "TextSource", "open_text", "refuse_too_large", "split_fields"]
 
 #: Largest text, unpacked, that is read at once [bytes]; 20 years of 24 ten-minute channels take
 #: about 0.4e9. Common practice for a laptop: the columns then need about as much memory again.
@@ -31,6 +33,15 @@ LARGEST_TEXT = 1_200_000_000
 _PIECE = 1 << 20
 #: A header block is looked for in the first bytes only.
 _HEAD = 1 << 18
+
+
+@dataclass(frozen=True)
+class Look:
+    """What one pass over a text gives: hash of the file, first NUL byte, count of delimiters."""
+
+    sha256: str
+    nul_at: int
+    delimiters: int
 
 
 @dataclass(frozen=True)
@@ -51,8 +62,10 @@ class TextSource:
         The line with the column names.
     header_line, first_line : int
         Line of the header, and of the first row.
-    delimiters : int
-        How often the delimiter stands behind the header.
+    header_delimiters : int
+        How often the delimiter stands up to the first row.
+    looked : Future
+        What one pass over the whole file gives; it runs beside the parsing.
     notes : tuple of str
         What was met that changes no value.
     """
@@ -64,8 +77,34 @@ class TextSource:
     header: str
     header_line: int
     first_line: int
-    delimiters: int
+    header_delimiters: int
+    looked: Future[Look]
     notes: tuple[str, ...]
+
+    @property
+    def delimiters(self) -> int:
+        """How often the delimiter stands behind the header."""
+        return self.looked.result().delimiters - self.header_delimiters
+
+    @property
+    def sha256(self) -> str:
+        """Hash of the file as sent."""
+        return self.looked.result().sha256
+
+    def refuse_damage(self) -> None:
+        """Refuse a text with NUL bytes, wherever they stand."""
+        at = self.looked.result().nul_at
+        if at < 0:
+            return
+        before = self.path.read_bytes() if self.held is None else self.held
+        raise StudyError.of(
+            file=self.file,
+            line=before.count(b"\n", 0, at) + 1,
+            met="there is a NUL byte",
+            rule="a text file has none; a logger or a disk that lost power leaves them",
+            remedy="ask for the file again; if that is all there is, delete the damaged lines "
+            "from a copy and say so in the study's notes",
+        )
 
     @cached_property
     def body(self) -> bytes:
@@ -104,16 +143,6 @@ class TextSource:
             ) from error
 
 
-@dataclass(frozen=True)
-class _Look:
-    """What one pass over a plain file gives."""
-
-    nul_at: int
-    delimiters: int
-    has_newline: bool
-    blank: bool
-
-
 def open_text(path: Path, written: str, settings: StationSettings) -> TextSource:
     """Open a text file, look it over and find its header.
 
@@ -135,11 +164,10 @@ def open_text(path: Path, written: str, settings: StationSettings) -> TextSource
     recoded = settings.encoding.lower().replace("_", "-") not in {"utf-8", "utf8", "ascii"}
     sign = settings.delimiter.encode("utf-8")
     if not packed and not recoded and settings.delimiter != "whitespace":
-        look = _look_over(path, sign)
-        if look.has_newline:
-            with path.open("rb") as stream:
-                head = stream.read(_HEAD)
-            return _split(head, None, look, path, written, settings)
+        with path.open("rb") as stream:
+            head = stream.read(_HEAD)
+        if b"\n" in head and not head.isspace():
+            return _split(head, None, _beside(_look_over, path, sign), path, written, settings)
     data = _unpacked(path, written)
     if recoded:
         data = _recoded(data, written, settings.encoding)
@@ -148,22 +176,36 @@ def open_text(path: Path, written: str, settings: StationSettings) -> TextSource
     if settings.delimiter == "whitespace":
         data = b"\n".join(b" ".join(line.split()) for line in data.splitlines())
         sign = b" "
-    look = _Look(data.find(b"\0"), data.count(sign), b"\n" in data, not data or data.isspace())
-    return _split(data, data, look, path, written, settings)
+    return _split(data, data, _beside(_look_at, path, data, sign), path, written, settings)
 
 
-def _look_over(path: Path, sign: bytes) -> _Look:
-    nul_at, delimiters, has_newline, blank, place = -1, 0, False, True, 0
-    with path.open("rb") as stream:
-        while piece := stream.read(_PIECE):
+def _beside(work: Callable[..., Look], *given: object) -> Future[Look]:
+    """Run something in a thread of its own while this one goes on."""
+    pool = ThreadPoolExecutor(max_workers=1)
+    future = pool.submit(work, *given)
+    pool.shutdown(wait=False)
+    return future
+
+
+def _look_over(path: Path, sign: bytes) -> Look:
+    digest = hashlib.sha256()
+    nul_at, delimiters, place = -1, 0, 0
+    buffer = bytearray(_PIECE)
+    counted = np.frombuffer(buffer, dtype=np.uint8)
+    with path.open("rb", buffering=0) as stream:
+        while count := stream.readinto(buffer):
+            digest.update(memoryview(buffer)[:count])
             # As an array because counting a frequent byte in a bytes object is ten times slower.
-            delimiters += int(np.count_nonzero(np.frombuffer(piece, dtype=np.uint8) == sign[0]))
-            has_newline = has_newline or b"\n" in piece
-            blank = blank and piece.isspace()
-            if nul_at < 0 and b"\0" in piece:
-                nul_at = place + piece.index(b"\0")
-            place += len(piece)
-    return _Look(nul_at, delimiters, has_newline, blank)
+            delimiters += int(np.count_nonzero(counted[:count] == sign[0]))
+            if nul_at < 0:
+                nul = buffer.find(0, 0, count)
+                nul_at = place + nul if nul >= 0 else -1
+            place += count
+    return Look(digest.hexdigest(), nul_at, delimiters)
+
+
+def _look_at(path: Path, data: bytes, sign: bytes) -> Look:
+    return Look(hashlib.sha256(path.read_bytes()).hexdigest(), data.find(b"\0"), data.count(sign))
 
 
 def _unpacked(path: Path, written: str) -> bytes:
@@ -221,7 +263,7 @@ def _only_member(path: Path, written: str) -> bytes:
 def _split(
     data: bytes,
     held: bytes | None,
-    look: _Look,
+    looked: Future[Look],
     path: Path,
     written: str,
     settings: StationSettings,
@@ -234,22 +276,12 @@ def _split(
             rule=f"the text is {settings.encoding}, as declared",
             remedy='write encoding = "utf-16", or save the file as UTF-8',
         )
-    if look.nul_at >= 0:
-        before = path.read_bytes() if held is None else held
-        raise StudyError.of(
-            file=written,
-            line=before.count(b"\n", 0, look.nul_at) + 1,
-            met="there is a NUL byte",
-            rule="a text file has none; a logger or a disk that lost power leaves them",
-            remedy="ask for the file again; if that is all there is, delete the damaged lines "
-            "from a copy and say so in the study's notes",
-        )
     notes = []
     start = 0
     if data.startswith(codecs.BOM_UTF8):
         start = len(codecs.BOM_UTF8)
         notes.append(f"{written} starts with a byte-order mark; it is read as UTF-8")
-    if look.blank or data[start:].isspace() or len(data) == start:
+    if data[start:].isspace() or len(data) == start:
         raise StudyError.of(
             file=written,
             met="the file is empty",
@@ -284,7 +316,8 @@ def _split(
         header=header,
         header_line=header_line,
         first_line=header_line + settings.skip_rows_after_header + 1,
-        delimiters=look.delimiters - data.count(sign, 0, start),
+        header_delimiters=data.count(sign, 0, start),
+        looked=looked,
         notes=tuple(notes),
     )
 

@@ -20,7 +20,7 @@ from windkit.kernels.exceedance import (
 )
 from windkit.study.artifacts import Outcome, Row, load_artifact
 from windkit.study.folder import Study
-from windkit.study.settings import UncertaintySettings
+from windkit.study.settings import UNCERTAINTY_GROUPS, UncertaintySettings
 
 __all__ = ["PROBABILITIES", "YEARS", "Uncertainty", "assess_uncertainty"]
 
@@ -110,15 +110,25 @@ def assess_uncertainty(study: Study) -> Uncertainty:
         ),
     ]  # fmt: skip
     rows += _hub_interval(energy, parts)
+    rows += [
+        Row(
+            f"uncertainty.total_{years}_year{'s' if years > 1 else ''}",
+            f"Standard uncertainty of the mean of {years} year{'s' if years > 1 else ''}",
+            float(table.standard_uncertainty[index]), "1",
+            "of energy; static and yearly causes in quadrature", as_percent=True,
+        )
+        for index, years in enumerate(YEARS)
+    ]  # fmt: skip
     narrowing = _narrowing(p50, parts)
     p90 = {
         years: float(table.level[index, names.index("P90")]) for index, years in enumerate(YEARS)
     }
-    leading = parts.sort_values("share_of_variance", ascending=False).iloc[0]
+    leading = parts.sort_values("share_of_ten_year_variance", ascending=False).iloc[0]
     said = {
         "parts": f"The largest part of the ten-year spread is {leading['name']}, with "
-        f"{leading['share_of_variance']:.0%} of the variance. Together the static causes come to "
-        f"{static:.1%} of energy; one year's windiness and operation add {yearly:.1%}.",
+        f"{leading['share_of_ten_year_variance']:.0%} of the variance. The static causes come to "
+        f"{static:.1%} of energy and those of one year to {yearly:.1%}; in quadrature that is "
+        f"{table.standard_uncertainty[0]:.1%} for one year.",
         "levels": f"P50 is {p50:,.0f} MWh a year. P90 is {p90[1]:,.0f} MWh for a single year, "
         f"{p90[10]:,.0f} for the mean of ten and {p90[20]:,.0f} for the mean of twenty.",
         "narrowing": f"Halving the uncertainty of {narrowing['halved'][0]} would raise the "
@@ -140,6 +150,7 @@ def assess_uncertainty(study: Study) -> Uncertainty:
             rows,
             {"levels": levels, "parts": parts, "narrowing": narrowing},
             said,
+            _not_considered(parts),
         ),
     )
 
@@ -150,7 +161,8 @@ def _parts(study: Study, long_term: Outcome, energy: Outcome, sensitivity: float
         (
             "historical_wind_resource", "long-term correction", "wind_speed", "static",
             long_term.number("long_term.standard_uncertainty"), "computed in step 3",
-        )
+        ),
+        *_period_for_climate(long_term),
     ]  # fmt: skip
     stated = study.settings.uncertainties
     if not any(cause.group == "yearly_variability" for cause in stated):
@@ -186,7 +198,7 @@ def _parts(study: Study, long_term: Outcome, energy: Outcome, sensitivity: float
     variance = in_energy**2 * weight
     parts.insert(5, "energy_standard_uncertainty", in_energy)
     total = variance.sum()
-    parts.insert(6, "share_of_variance", variance / total if total > 0 else variance)
+    parts.insert(6, "share_of_ten_year_variance", variance / total if total > 0 else variance)
     return parts
 
 
@@ -241,9 +253,38 @@ def _hub_interval(energy: Outcome, parts: pd.DataFrame) -> list[Row]:
     ]  # fmt: skip
 
 
+def _period_for_climate(long_term: Outcome) -> list[tuple[str, str, str, str, float, str]]:
+    """How well the references' years stand for the years to come, if step 3 could tell."""
+    key = "long_term.representativeness"
+    if all(row.key != key for row in long_term.rows):
+        return []
+    return [
+        (
+            "historical_wind_resource",
+            "reference years for the climate",
+            "wind_speed",
+            "static",
+            long_term.number(key),
+            "computed in step 3, persistence included",
+        )
+    ]
+
+
 def _spread(parts: pd.DataFrame, varies: str) -> float:
     chosen = parts.loc[parts["varies"] == varies, "energy_standard_uncertainty"]
     return float(combine_in_quadrature(chosen.to_numpy(dtype=float))) if len(chosen) else 0.0
+
+
+def _not_considered(parts: pd.DataFrame) -> list[str]:
+    """A warning for the groups of the open draft that no cause stands for."""
+    there = set(parts.loc[parts["standard_uncertainty"].astype(float) > 0, "group"])
+    missing = [group.replace("_", " ") for group in UNCERTAINTY_GROUPS if group not in there]
+    if not missing:
+        return []
+    return [
+        f"No uncertainty is stated for {', '.join(missing)}: the spread is narrower than it would "
+        "be with them."
+    ]
 
 
 def _narrowing(p50: float, parts: pd.DataFrame) -> pd.DataFrame:

@@ -6,18 +6,14 @@ A check masks nothing. `run_checks` runs them all; the ledger says what is left 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
 
+from windkit.study.checks.calibration import calibration_twice_spans, unit_change_spans
 from windkit.study.checks.clock import clock_step_spans, lag_windows
-from windkit.study.checks.drift import (
-    calibration_twice_spans,
-    drift_spans,
-    find_wear,
-    unit_change_spans,
-)
+from windkit.study.checks.drift import drift_spans, find_wear
 from windkit.study.checks.icing import icing_spans
 from windkit.study.checks.jumps import spike_spans, step_spans
 from windkit.study.checks.north import monthly_north, north_spans
@@ -29,7 +25,13 @@ from windkit.study.checks.relations import (
     vane_pair_spans,
 )
 from windkit.study.checks.repeats import missing_code_spans, repeated_block_spans
-from windkit.study.checks.shadow import free_of_shadow, mast_shadows, pair_ratio, shadow_spans
+from windkit.study.checks.shadow import (
+    Shadow,
+    free_of_shadow,
+    mast_shadows,
+    pair_ratio,
+    shadow_spans,
+)
 from windkit.study.checks.spans import SPAN_COLUMNS, joined, no_spans
 from windkit.study.checks.thresholds import MASKING_RULES, RULES, CheckSettings
 from windkit.study.checks.values import (
@@ -46,6 +48,8 @@ __all__ = [
     "RULES",
     "SPAN_COLUMNS",
     "CheckSettings",
+    "Given",
+    "Shadow",
     "calibration_twice_spans",
     "clock_step_spans",
     "drift_spans",
@@ -77,40 +81,44 @@ __all__ = [
     "without",
 ]
 
-Check = Callable[[Reading, CheckSettings, Sequence[Reading], float], pd.DataFrame]
+
+@dataclass(frozen=True)
+class Given:
+    """What checks share: references, the ground's elevation [m], the mast's shadows."""
+
+    references: Sequence[Reading] = ()
+    elevation: float = 0.0
+    shadows: list[Shadow] | None = None
 
 
-def _alone(check: Callable[[Reading, CheckSettings], pd.DataFrame]) -> Check:
-    """A check that needs neither references nor the elevation."""
-    return lambda reading, settings, references, elevation: check(reading, settings)
-
+Check = Callable[[Reading, CheckSettings, Given], pd.DataFrame]
 
 #: Every check by its rule's name, in the order they run.
 CHECKS: dict[str, Check] = {
-    "range": _alone(range_spans),
-    "range_mark": lambda reading, settings, references, elevation: range_mark_spans(
-        reading, settings, elevation=elevation
+    "range": lambda reading, settings, given: range_spans(reading, settings),
+    "range_mark": lambda reading, settings, given: range_mark_spans(
+        reading, settings, elevation=given.elevation
     ),
-    "order": _alone(order_spans),
-    "gust": _alone(gust_spans),
-    "pair": _alone(pair_spans),
-    "heights": _alone(height_spans),
-    "vane_pair": _alone(vane_pair_spans),
-    "step": _alone(step_spans),
-    "stuck": _alone(stuck_spans),
-    "repeated_block": _alone(repeated_block_spans),
-    "spike": _alone(spike_spans),
-    "missing_code": _alone(missing_code_spans),
-    "icing": _alone(icing_spans),
-    "shadow": _alone(shadow_spans),
-    "drift": _alone(drift_spans),
-    "north": lambda reading, settings, references, elevation: north_spans(
-        reading, settings, references
+    "order": lambda reading, settings, given: order_spans(reading, settings),
+    "gust": lambda reading, settings, given: gust_spans(reading, settings),
+    "pair": lambda reading, settings, given: pair_spans(reading, settings, given.shadows),
+    "heights": lambda reading, settings, given: height_spans(reading, settings, given.shadows),
+    "vane_pair": lambda reading, settings, given: vane_pair_spans(reading, settings),
+    "step": lambda reading, settings, given: step_spans(reading, settings),
+    "stuck": lambda reading, settings, given: stuck_spans(reading, settings),
+    "repeated_block": lambda reading, settings, given: repeated_block_spans(reading, settings),
+    "spike": lambda reading, settings, given: spike_spans(reading, settings),
+    "missing_code": lambda reading, settings, given: missing_code_spans(reading, settings),
+    "icing": lambda reading, settings, given: icing_spans(reading, settings, given.shadows),
+    "shadow": lambda reading, settings, given: shadow_spans(reading, settings, given.shadows),
+    "drift": lambda reading, settings, given: drift_spans(reading, settings, given.shadows),
+    "north": lambda reading, settings, given: north_spans(reading, settings, given.references),
+    "calibration_twice": lambda reading, settings, given: calibration_twice_spans(
+        reading, settings, given.shadows
     ),
-    "calibration_twice": _alone(calibration_twice_spans),
-    "unit_change": _alone(unit_change_spans),
-    "clock_step": lambda reading, settings, references, elevation: clock_step_spans(
-        reading, settings, references
+    "unit_change": lambda reading, settings, given: unit_change_spans(reading, settings),
+    "clock_step": lambda reading, settings, given: clock_step_spans(
+        reading, settings, given.references
     ),
 }
 
@@ -146,11 +154,8 @@ def run_checks(
     settings = settings or CheckSettings()
     impossible = range_spans(reading, settings)
     rest = without(reading, impossible)
-    tables = [
-        check(rest, settings, references, elevation)
-        for rule, check in CHECKS.items()
-        if rule != "range"
-    ]
+    given = Given(tuple(references), elevation, mast_shadows(rest, settings))
+    tables = [check(rest, settings, given) for rule, check in CHECKS.items() if rule != "range"]
     return joined([impossible, *tables])
 
 

@@ -28,6 +28,7 @@ __all__ = [
     "levels",
     "long_runs",
     "median_by",
+    "middle",
     "nearest_speed",
     "nearest_vane",
     "siblings",
@@ -103,6 +104,12 @@ def siblings(settings: StationSettings, channel: ChannelSettings) -> list[Channe
         and other.height_m == channel.height_m
         and other.boom_bearing_deg == channel.boom_bearing_deg
     ]
+
+
+def middle(values: Values) -> float:
+    """Median of what is known; NaN if nothing is."""
+    known = values[np.isfinite(values)]
+    return float(np.median(known)) if len(known) else math.nan
 
 
 def spread(values: Values) -> float:
@@ -230,7 +237,7 @@ def expected_speed(
                 [log_speed(c) for c in high]
             )
     ratio = log_speed(cup) - expected
-    level = float(np.nanmedian(ratio)) if np.isfinite(ratio).any() else math.nan
+    level = middle(ratio)
     return Expected(ratio - level, level, basis, used)
 
 

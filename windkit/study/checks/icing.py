@@ -8,6 +8,7 @@ listed until they move again.
 from __future__ import annotations
 
 import itertools
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -23,7 +24,7 @@ from windkit.study.checks.comparing import (
     siblings,
     values_of,
 )
-from windkit.study.checks.shadow import free_of_shadow
+from windkit.study.checks.shadow import Shadow, free_of_shadow
 from windkit.study.checks.spans import joined, spans_of
 from windkit.study.checks.thresholds import CheckSettings
 from windkit.study.reading import Reading
@@ -49,13 +50,17 @@ class _Sign:
     mask: Mask
 
 
-def icing_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
+def icing_spans(
+    reading: Reading, settings: CheckSettings, shadows: list[Shadow] | None = None
+) -> pd.DataFrame:
     """Sensors that stand still or read low in the cold, by several signs together.
 
     Parameters
     ----------
     reading, settings : Reading, CheckSettings
         The record as read, and thresholds.
+    shadows : list of Shadow, optional
+        The mast's shadows, if they are at hand.
 
     Returns
     -------
@@ -83,7 +88,7 @@ def icing_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
     cold = _carried(temperature, intervals_in(reading, _PAUSE_MIN)) < settings.icing_below_k
     if not cold.any():
         return joined([])
-    signs = _signs(reading, settings, cold)
+    signs = _signs(reading, settings, cold, free_of_shadow(reading, settings, shadows))
     if not signs:
         return joined([])
     showing = np.sum([sign.mask for sign in signs], axis=0)
@@ -120,7 +125,9 @@ def icing_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
     return joined(tables)
 
 
-def _signs(reading: Reading, settings: CheckSettings, cold: Mask) -> list[_Sign]:
+def _signs(
+    reading: Reading, settings: CheckSettings, cold: Mask, free: dict[str, Mask]
+) -> list[_Sign]:
     needed = intervals_in(reading, settings.icing_shortest_min)
     station = reading.settings
     vanes = station.directions
@@ -135,9 +142,11 @@ def _signs(reading: Reading, settings: CheckSettings, cold: Mask) -> list[_Sign]
         cup = nearest_speed(station, vane.height_m)
         # In a calm a vane may rest; a cup at its floor beside it says nothing either way.
         resting = (values_of(reading, cup) < _WINDY) & (fastest < _WINDY)
-        mask = long_runs(still_vane[vane.name] & cold & ~resting, needed)
+        unmoved = still_vane[vane.name] & ~resting
+        # Whole degrees, or tens of them, repeat by chance: as often as in warm air.
+        chance = _run_by_chance(unmoved[~cold], int(cold.sum()), settings)
+        mask = long_runs(unmoved & cold, max(needed, chance))
         signs.append(_Sign(vane, "vane does not move", mask))
-    free = free_of_shadow(reading, settings)
     for cup in cups:
         others = [other for other in cups if other.name != cup.name]
         windy = np.zeros(len(cold), dtype=bool)
@@ -157,6 +166,14 @@ def _signs(reading: Reading, settings: CheckSettings, cold: Mask) -> list[_Sign]
         signs += [_Sign(cup, "all still for long", frozen) for cup in cups]
         signs += [_Sign(vane, "all still for long", frozen) for vane in vanes]
     return [sign for sign in signs if sign.mask.any()]
+
+
+def _run_by_chance(still_when_warm: Mask, count: int, settings: CheckSettings) -> int:
+    """How long a vane must be still to be more than coarse digits, from how it is when warm."""
+    if not len(still_when_warm) or not count:
+        return 1
+    share = min(max(float(still_when_warm.mean()), 1e-6), 0.95)
+    return math.ceil(1 + math.log(settings.stuck_false_alarms / count) / math.log(share))
 
 
 def _still(reading: Reading, vane: ChannelSettings) -> Mask:

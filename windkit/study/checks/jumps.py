@@ -6,6 +6,8 @@ sensor at once; what moves one sensor alone is suspect.
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
@@ -143,7 +145,8 @@ def spike_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
     Notes
     -----
     A value stands out if it lies on one side of both neighbours, from each by more than half the
-    hourly step of MEA-9 and by ``spike_spreads`` robust spreads of such departures, which grow
+    hourly step of MEA-9 (more, as the root of the interval, beyond ten minutes) and by
+    ``spike_spreads`` robust spreads of such departures, which grow
     with the speed. Another sensor of the same kind that departs the same way makes it weather.
     Without such a sensor a squall cannot be told from a spike: speeds are then held to twice the
     departure.
@@ -159,7 +162,9 @@ def spike_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
         departure = _departure(reading, values)
         scale = np.maximum(values - departure, 1.0) if channel.quantity in SPEEDS else None
         usual = spread(departure if scale is None else departure / scale)
-        least = 0.5 * limit if channel.quantity in SPEEDS else limit
+        # Over a longer interval weather changes more from one value to the next.
+        longer = math.sqrt(max(reading.settings.interval_min / 10.0, 1.0))
+        least = longer * (0.5 * limit if channel.quantity in SPEEDS else limit)
         bound = np.maximum(
             least, settings.spike_spreads * usual * (1.0 if scale is None else scale)
         )

@@ -24,7 +24,7 @@ from windkit.study.checks.comparing import (
     spread,
     values_of,
 )
-from windkit.study.checks.shadow import free_of_shadow
+from windkit.study.checks.shadow import Shadow, free_of_shadow
 from windkit.study.checks.spans import joined, spans_of
 from windkit.study.checks.thresholds import CheckSettings
 from windkit.study.reading import Reading
@@ -122,13 +122,17 @@ def gust_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
     return joined(tables)
 
 
-def pair_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
+def pair_spans(
+    reading: Reading, settings: CheckSettings, shadows: list[Shadow] | None = None
+) -> pd.DataFrame:
     """Two cups at one height that disagree, outside the mast's shadow.
 
     Parameters
     ----------
     reading, settings : Reading, CheckSettings
         The record as read, and thresholds.
+    shadows : list of Shadow, optional
+        The mast's shadows, if they are at hand.
 
     Returns
     -------
@@ -146,7 +150,7 @@ def pair_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
     .. [1] Bailey et al. 1997, NREL/SR-440-22223, relational tests (MEA-8).
     """
     tables = []
-    free = free_of_shadow(reading, settings)
+    free = free_of_shadow(reading, settings, shadows)
     for one, other in speed_pairs(reading.settings, settings.pair_height_m):
         usable = free[one.name] & free[other.name]
         tables += _disagreement(
@@ -155,13 +159,17 @@ def pair_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
     return joined(tables)
 
 
-def height_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
+def height_spans(
+    reading: Reading, settings: CheckSettings, shadows: list[Shadow] | None = None
+) -> pd.DataFrame:
     """Cups at neighbouring heights that differ by more than a profile does.
 
     Parameters
     ----------
     reading, settings : Reading, CheckSettings
         The record as read, and thresholds.
+    shadows : list of Shadow, optional
+        The mast's shadows, if they are at hand.
 
     Returns
     -------
@@ -175,7 +183,7 @@ def height_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
     """
     tables = []
     cups = reading.settings.mean_speeds
-    free = free_of_shadow(reading, settings)
+    free = free_of_shadow(reading, settings, shadows)
     for at, upper in enumerate(cups):
         below = [c for c in cups[at + 1 :] if upper.height_m - c.height_m > settings.pair_height_m]
         if not below:

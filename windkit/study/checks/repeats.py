@@ -54,7 +54,8 @@ def repeated_block_spans(reading: Reading, settings: CheckSettings) -> pd.DataFr
     from value to value are equal, N windows bring N**2/2 q**n pairs. Windows that hardly move
     are left out.
     """
-    channels = [c for c in reading.settings.channels if c.statistic in {"mean", "max", "min"}]
+    # What was copied was copied in rows: the means show it.
+    channels = [c for c in reading.settings.channels if c.statistic == "mean"]
     groups: dict[str, list[ChannelSettings]] = {}
     for channel in channels:
         groups.setdefault(channel.quantity, []).append(channel)
@@ -84,15 +85,18 @@ def _repeated(
         places.append(at)
         owners.append(np.full(len(at), number, dtype=np.int64))
     hashed, place, owner = (np.concatenate(part) for part in (hashes, places, owners))
-    # By hash, then by time: the first of equal windows is the earlier one.
-    order = np.lexsort((owner, place, hashed))
+    order = np.argsort(hashed, kind="stable")
     hashed, place, owner = hashed[order], place[order], owner[order]
     new = np.ones(len(hashed), dtype=bool)
     new[1:] = hashed[1:] != hashed[:-1]
-    first = np.flatnonzero(new)[np.cumsum(new) - 1]
-    again = np.flatnonzero(~new)
-    if not len(again):
+    if new.all():
         return []
+    # Of equal windows the earliest is taken for the first, whichever channel it is in.
+    group_of = np.cumsum(new) - 1
+    earliest = np.lexsort((owner, place, group_of))
+    place, owner = place[earliest], owner[earliest]
+    first = np.flatnonzero(new)[group_of]
+    again = np.flatnonzero(~new)
     tables = []
     for number, channel in enumerate(group):
         mine = again[owner[again] == number]
@@ -199,6 +203,8 @@ def missing_code_spans(reading: Reading, settings: CheckSettings) -> pd.DataFram
     """
     tables = []
     for channel in reading.settings.channels:
+        if channel.statistic == "sd":
+            continue  # a spread piles up at zero and at one digit, rightly
         values = values_of(reading, channel)
         known = np.isfinite(values)
         distinct, counts = np.unique(values[known], return_counts=True)

@@ -237,13 +237,17 @@ def _in_sector(
     return inside
 
 
-def shadow_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
+def shadow_spans(
+    reading: Reading, settings: CheckSettings, shadows: list[Shadow] | None = None
+) -> pd.DataFrame:
     """Times at which a cup stands in the mast's shadow.
 
     Parameters
     ----------
     reading, settings : Reading, CheckSettings
         As in `mast_shadows`.
+    shadows : list of Shadow, optional
+        If they are at hand.
 
     Returns
     -------
@@ -252,7 +256,7 @@ def shadow_spans(reading: Reading, settings: CheckSettings) -> pd.DataFrame:
         where only the boom's bearing is known.
     """
     tables = []
-    for shadow in mast_shadows(reading, settings):
+    for shadow in mast_shadows(reading, settings) if shadows is None else shadows:
         cup = reading.settings.channel(shadow.channel)
         found = shadow.basis == "found"
         start, stop = shadow.sector_from, shadow.sector_to

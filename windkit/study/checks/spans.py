@@ -90,12 +90,12 @@ def spans_of(
     if measure is None:
         shown = (behind - first).astype(float)
     else:
-        shown = np.array(
-            [
-                part[np.nanargmax(np.abs(part))]
-                for part in (measure[a:b] for a, b in zip(first, behind, strict=True))
-            ]
-        )
+        # Pairs of first and behind-last positions; every second piece lies between the runs.
+        edges = np.column_stack([first, behind]).ravel()
+        padded = np.append(measure, np.nan)
+        largest = np.fmax.reduceat(padded, edges)[::2]
+        smallest = np.fmin.reduceat(padded, edges)[::2]
+        shown = np.where(np.abs(largest) >= np.abs(smallest), largest, smallest)
     return _typed(
         pd.DataFrame(
             {

@@ -1,8 +1,8 @@
 """Thresholds of the data checks: names, defaults and where each comes from.
 
 Every number a check compares with stands here and can be set in the `[checks]` table of
-`study.toml`. Screening marks of the 1997 measurement handbook (NREL/SR-440-22223, tables of range,
-relational and trend tests) are ids MEA-7 to MEA-9. A default without a printed source is marked
+`study.toml`. MEA-7 to MEA-9 are the range, relational and trend tests of Bailey et al. 1997, Wind
+Resource Assessment Handbook, NREL/SR-440-22223. A default without a printed source is marked
 'common practice'.
 """
 
@@ -66,29 +66,39 @@ class CheckSettings(BaseModel):
     highest_relative_humidity: float = _of(1.05, "sensors overshoot in fog; common practice")
 
     # range_mark: what is worth a look
-    mark_mean_speed_m_s: float = _of(25.0, "MEA-7, mean speed")
-    mark_gust_m_s: float = _of(30.0, "MEA-7, highest gust")
-    mark_speed_sd_m_s: float = _of(3.0, "MEA-7, spread of speed")
-    mark_direction_sd_low_deg: float = _of(3.0, "MEA-7, least spread of direction")
-    mark_direction_sd_high_deg: float = _of(75.0, "MEA-7, largest spread of direction")
-    mark_pressure_low_pa: float = _of(94_000.0, "MEA-7, at the sea; scaled with the elevation")
-    mark_pressure_high_pa: float = _of(106_000.0, "MEA-7, at the sea; scaled with the elevation")
+    mark_mean_speed_m_s: float = _of(25.0, "Bailey et al. 1997, range: mean speed")
+    mark_gust_m_s: float = _of(30.0, "Bailey et al. 1997, range: highest gust")
+    mark_speed_sd_m_s: float = _of(3.0, "Bailey et al. 1997, range: spread of speed")
+    mark_direction_sd_low_deg: float = _of(
+        3.0, "Bailey et al. 1997, range: least spread of direction"
+    )
+    mark_direction_sd_high_deg: float = _of(
+        75.0, "Bailey et al. 1997, range: largest spread of direction"
+    )
+    mark_pressure_low_pa: float = _of(
+        94_000.0, "Bailey et al. 1997, range: at the sea; scaled with the elevation"
+    )
+    mark_pressure_high_pa: float = _of(
+        106_000.0, "Bailey et al. 1997, range: at the sea; scaled with the elevation"
+    )
 
     # order, gust, pair, heights, vane_pair: how channels go together
-    highest_gust_factor: float = _of(2.5, "MEA-8, gust over mean")
+    highest_gust_factor: float = _of(2.5, "Bailey et al. 1997, relation: gust over mean")
     gust_mean_speed_m_s: float = _of(4.0, "gusts are judged at means above; common practice")
-    pair_difference_m_s: float = _of(0.5, "MEA-8, redundant sensors, mean")
+    pair_difference_m_s: float = _of(0.5, "Bailey et al. 1997, relation: redundant sensors, mean")
     pair_height_m: float = _of(2.0, "sensors this close in height are a pair; common practice")
-    height_difference_m_s_per_m: float = _of(2.0 / 15.0, "MEA-8: 2 m/s at 40/25 m, 4 at 40/10 m")
-    vane_difference_deg: float = _of(20.0, "MEA-8, vanes at two heights")
+    height_difference_m_s_per_m: float = _of(
+        2.0 / 15.0, "Bailey et al. 1997, relation: 2 m/s at 40/25 m, 4 at 40/10 m"
+    )
+    vane_difference_deg: float = _of(20.0, "Bailey et al. 1997, relation: vanes at two heights")
     vane_moves_above_m_s: float = _of(4.0, "directions are compared above; common practice")
     learned_spreads: float = _of(6.0, "robust spreads of the site's own data; common practice")
     shortest_relation_min: float = _of(30.0, "shortest span of a relation; common practice")
 
     # step, spike
-    step_speed_m_s_per_h: float = _of(5.0, "MEA-9, speed in 1 h")
-    step_temperature_k_per_h: float = _of(5.0, "MEA-9, temperature in 1 h")
-    step_pressure_pa_per_3h: float = _of(1_000.0, "MEA-9, pressure in 3 h")
+    step_speed_m_s_per_h: float = _of(5.0, "Bailey et al. 1997, trend: speed in 1 h")
+    step_temperature_k_per_h: float = _of(5.0, "Bailey et al. 1997, trend: temperature in 1 h")
+    step_pressure_pa_per_3h: float = _of(1_000.0, "Bailey et al. 1997, trend: pressure in 3 h")
     front_turn_deg: float = _of(30.0, "turn of the wind that marks a front; common practice")
     spike_spreads: float = _of(8.0, "robust spreads of value against neighbours; common practice")
 

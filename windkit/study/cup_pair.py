@@ -1,4 +1,4 @@
-"""Selective averaging: of two cups at one height, the one that stands free of the mast.
+"""Averaging by direction: of two cups at one height, the one that stands free of the mast.
 
 Here a pair becomes one speed: the mean of both where both stand free, the free one where the mast
 shades the other, whichever is left where one is masked. Where the shadows are is found in
@@ -17,11 +17,11 @@ from windkit.study.checks.comparing import MOVING_SPEED, speed_pairs
 from windkit.study.errors import StudyError
 from windkit.study.record import Record
 
-__all__ = ["SelectiveAverage", "selective_average"]
+__all__ = ["PairSpeed", "speed_of_pair"]
 
 
 @dataclass(frozen=True)
-class SelectiveAverage:
+class PairSpeed:
     """One wind speed out of a pair of cups.
 
     Attributes
@@ -48,14 +48,14 @@ class SelectiveAverage:
     mean: float
 
 
-def selective_average(
+def speed_of_pair(
     record: Record,
     first: str,
     second: str,
     *,
     check_settings: CheckSettings | None = None,
     match_levels: bool = True,
-) -> SelectiveAverage:
+) -> PairSpeed:
     """Average a pair of cups by direction, leaving out the one behind the mast.
 
     Parameters
@@ -72,7 +72,7 @@ def selective_average(
 
     Returns
     -------
-    SelectiveAverage
+    PairSpeed
         The speed, what each value stands on, and the effect.
 
     Raises
@@ -116,7 +116,7 @@ def selective_average(
     speed[basis == ""] = np.nan
     index = record.masked.index
     plain = there[0] & there[1]
-    return SelectiveAverage(
+    return PairSpeed(
         wind_speed=pd.Series(speed, index=index, name="wind_speed"),
         basis=pd.Series(basis, index=index, name="basis"),
         level=level,

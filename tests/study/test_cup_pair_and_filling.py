@@ -1,4 +1,4 @@
-"""Selective averaging, gap filling and the worth of checks, on masts whose truth is known."""
+"""Averaging by direction, gap filling and the worth of checks, on masts whose truth is known."""
 
 from __future__ import annotations
 
@@ -10,9 +10,9 @@ import pytest
 from scipy import signal, stats
 from station_examples import channel, reading_of, settings
 
-from windkit.study.averaging import selective_average
 from windkit.study.check_worth import worth_of_checks
 from windkit.study.checks import CheckSettings, mast_shadows, pair_ratio
+from windkit.study.cup_pair import speed_of_pair
 from windkit.study.errors import StudyError
 from windkit.study.gap_filling import fill_gaps
 from windkit.study.record import Record, build_record
@@ -106,9 +106,9 @@ def test_the_pair_ratio_by_direction_is_the_medians_of_its_bins():
     assert table.loc[table["direction"] == 180.0, "ratio"].item() == pytest.approx(expected)
 
 
-def test_the_selective_average_meets_the_true_mean_and_the_plain_one_does_not():
+def test_the_speed_of_pair_meets_the_true_mean_and_the_plain_one_does_not():
     record, speed = mast()
-    averaged = selective_average(record, "speed_a", "speed_b")
+    averaged = speed_of_pair(record, "speed_a", "speed_b")
     truth = speed.mean() * 1.005  # the level of a pair that is 1 % apart
     assert averaged.mean == pytest.approx(truth, rel=1e-3)
     assert averaged.plain_mean < 0.995 * truth
@@ -119,7 +119,7 @@ def test_the_selective_average_meets_the_true_mean_and_the_plain_one_does_not():
 
 def test_a_lost_cup_leaves_the_other_one_even_behind_the_mast():
     record, _ = mast(gap=slice(1000, 6000))
-    averaged = selective_average(record, "speed_a", "speed_b")
+    averaged = speed_of_pair(record, "speed_a", "speed_b")
     assert averaged.wind_speed.notna().all()
     assert (averaged.basis.iloc[1000:6000] == "speed_b").all()
 
@@ -127,7 +127,7 @@ def test_a_lost_cup_leaves_the_other_one_even_behind_the_mast():
 def test_cups_that_are_no_pair_are_refused():
     record, _ = mast()
     with pytest.raises(StudyError, match="Name one of the pairs: speed_a and speed_b"):
-        selective_average(record, "speed_a", "speed_40")
+        speed_of_pair(record, "speed_a", "speed_40")
 
 
 def test_a_gap_is_filled_without_bias_and_stays_marked():

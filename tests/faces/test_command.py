@@ -195,7 +195,7 @@ BAD_FOLDERS: dict[str, tuple[Change, list[str]]] = {
     ),
     "ledger row with a bad stamp": (
         ledger("speed_60,2022-03-05,2022-03-06T00:00:00Z,0,manual,ice,,accepted,A. Reader,"),
-        ["ledger.csv, line 2: from is '2022-03-05'", "Write it as 2026-01-31T04:10:00Z"],
+        ["ledger.csv, line 2: from is '2022-03-05'", "Write 2022-03-05T00:00:00Z if it is UTC"],
     ),
     "ledger row without a reason": (
         ledger("*,2022-03-05T00:00:00Z,2022-03-06T00:00:00Z,0,manual,,,accepted,A. Reader,"),

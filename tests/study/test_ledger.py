@@ -106,8 +106,9 @@ def test_a_decision_made_in_a_panel_is_a_row():
     ("old", "new", "words"),
     [
         ("accepted", "perhaps", "decision is 'perhaps'"),
-        ("00:10:00Z", "00:10:00", "write it as 2026-01-31T04:10:00Z"),
-        ("2026-01-01T00:10:00Z", "early", "from is 'early'"),
+        ("00:10:00Z", "00:10:00", "write 2026-01-01T00:10:00Z if it is UTC"),
+        ("00:10:00Z", "00:10:00+01:00", "write 2025-12-31T23:10:00Z, which is the same time"),
+        ("2026-01-01T00:10:00Z", "early", "from is 'early'.*write it as 2026-01-31T04:10:00Z"),
         ("00:30", "00:10", "is empty"),
         (",wet,", ",,", "a person's decision has no reason"),
         ("E. Marsh", "", "who is empty"),
@@ -128,6 +129,16 @@ def test_other_columns_are_refused(tmp_path: Path):
     path.write_text("channel,start\n", encoding="utf-8")
     with pytest.raises(StudyError, match="Write this header"):
         read_ledger(path)
+
+
+@pytest.mark.parametrize(("sign", "word"), [(";", "semicolons"), ("\t", "tabs")])
+@pytest.mark.parametrize("first", [0, 1])
+def test_another_separator_is_named(tmp_path: Path, sign: str, word: str, first: int):
+    lines = [",".join(LEDGER_COLUMNS), ROW]
+    lines[first:] = [line.replace(",", sign) for line in lines[first:]]
+    (tmp_path / "ledger.csv").write_text("\n".join(lines) + "\n", encoding="utf-8")
+    with pytest.raises(StudyError, match=f"line {first + 1}: the fields are set apart by {word}"):
+        read_ledger(tmp_path / "ledger.csv")
 
 
 def test_an_unknown_channel_is_refused(tmp_path: Path):

@@ -7,6 +7,8 @@ import datetime as dt
 import gzip
 from pathlib import Path
 
+import openpyxl
+import pandas as pd
 import pyarrow as pa
 import pyarrow.parquet as pq
 import pytest
@@ -182,6 +184,90 @@ def test_parquet_with_a_text_or_infinite_column_is_refused(tmp_path: Path):
     pq.write_table(pa.table(columns), tmp_path / "mast.parquet")
     with pytest.raises(StudyError, match="infinite in 1 rows, first in row 2"):
         read_station(settings(files=["mast.parquet"]), tmp_path)
+
+
+def test_decimal_commas_are_named_and_nothing_else_is_offered(tmp_path: Path):
+    rows = [row.replace(",", ";").replace(".", ",") for row in ROWS]
+    write(tmp_path, *rows, "2026-01-01 00:40;NAN;1;1", header=HEADER.replace(",", ";"))
+    with pytest.raises(StudyError, match=r"6 fields are not a number.* Write decimal = \",\"\.$"):
+        read_station(settings(delimiter=";"), tmp_path)
+    station = settings(delimiter=";", decimal=",", missing=["NAN"])
+    assert read_station(station, tmp_path).rows_kept == 4
+
+
+def test_decimal_points_are_named_and_nothing_else_is_offered(tmp_path: Path):
+    write(tmp_path, *(row.replace(",", ";") for row in ROWS), header=HEADER.replace(",", ";"))
+    with pytest.raises(StudyError, match=r"5 fields are not a number.* Write decimal = \"\.\"\.$"):
+        read_station(settings(delimiter=";", decimal=","), tmp_path)
+
+
+def test_one_comma_among_points_is_a_fault_of_the_file(tmp_path: Path):
+    write(tmp_path, ROWS[0], '2026-01-01 00:20,"6,0",10,1', ROWS[2])
+    with pytest.raises(StudyError, match=r'Write missing = \["6,0"\] if these mean no value'):
+        read_station(settings(), tmp_path)
+
+
+@pytest.mark.parametrize("under", [["TS,m/s,Deg,Deg C"], ["TS,m/s,Deg,Deg C", ",Avg,WVc,Avg"]])
+def test_lines_of_units_under_the_header_are_told_from_codes(tmp_path: Path, under: list[str]):
+    write(tmp_path, *under, *ROWS)
+    with pytest.raises(StudyError) as met:
+        read_station(settings(), tmp_path)
+    assert f"Write skip_rows_after_header = {len(under)}" in str(met.value)
+    assert "missing" not in str(met.value)
+    assert read_station(settings(skip_rows_after_header=len(under)), tmp_path).rows_kept == 3
+    book = openpyxl.Workbook()
+    for row in [HEADER, *under, *ROWS]:
+        book.active.append([_cell(text) for text in row.split(",")])
+    book.save(tmp_path / "mast.xlsx")
+    with pytest.raises(StudyError, match=f"Write skip_rows_after_header = {len(under)}"):
+        read_station(settings(files=["mast.xlsx"]), tmp_path)
+
+
+def _cell(text: str) -> float | str | None:
+    with contextlib.suppress(ValueError):
+        return float(text)
+    return text or None
+
+
+def test_a_line_without_stamp_under_the_header_is_told_from_a_wrong_time_format(tmp_path: Path):
+    write(tmp_path, "-,,,", *ROWS)
+    with pytest.raises(StudyError, match="units, write skip_rows_after_header = 1; if not, write"):
+        read_station(settings(), tmp_path)
+    write(tmp_path, *ROWS, "-,,,")
+    with pytest.raises(StudyError, match=r"line 5 '-'.* Write time_format"):
+        read_station(settings(), tmp_path)
+
+
+def ten_minutes(first: str, count: int) -> list[str]:
+    stamps = pd.date_range(first, periods=count, freq="10min")
+    return [f"{stamp:%Y-%m-%d %H:%M},5,{at},1" for at, stamp in enumerate(stamps)]
+
+
+@pytest.mark.parametrize("day", ["2025-07-01", "2025-10-25"])  # the second with a clock change
+def test_files_that_overlap_are_both_named(tmp_path: Path, day: str):
+    write(tmp_path, *ten_minutes(day, 400), name="a.csv")
+    write(tmp_path, *ten_minutes(f"{day} 12:00", 400), name="b.csv")
+    files = ["a.csv", "b.csv"]
+    with pytest.raises(StudyError) as met:
+        read_station(settings(files=files), tmp_path)
+    message = str(met.value)
+    assert f"two files overlap from {day} 12:00 to " in message
+    assert f"a.csv runs from {day} 00:00 to " in message
+    assert f"b.csv from {day} 12:00 to " in message
+    assert "328 stamps stand in both" in message
+    assert 'unsorted_stamps = "sort" and repeated_stamps = "keep_first"' in message
+    station = settings(files=files, unsorted_stamps="sort", repeated_stamps="keep_first")
+    reading = read_station(station, tmp_path)
+    assert (reading.rows_read, reading.rows_kept) == (800, 472)
+    assert set(reading.set_aside["file"]) == {"b.csv"}
+
+
+def test_a_file_that_fills_a_gap_of_another_is_no_double(tmp_path: Path):
+    rows = ten_minutes("2025-07-01", 400)
+    write(tmp_path, *rows[:100], *rows[200:], name="a.csv")
+    write(tmp_path, *rows[100:200], name="b.csv")
+    with pytest.raises(StudyError, match=r"0 stamps stand in both.*unsorted_stamps = \"sort\"\. I"):
+        read_station(settings(files=["a.csv", "b.csv"]), tmp_path)
 
 
 FIELD = st.one_of(

@@ -148,7 +148,9 @@ def listing(study: Study, path: str) -> Table:
     """A list of tables of `study.toml`, one row an entry: keys that no entry sets are left out."""
     section, _, key = path.partition(".")
     entries = study.section(section)[key] if key else study.section(section)
-    used = [name for name in entries[0] if any(entry[name] not in (None, []) for entry in entries)]
+    used = [
+        name for name in entries[0] if any(entry[name] not in (None, "", []) for entry in entries)
+    ]
     rows = [{name: entry[name] for name in used} for entry in entries]
     # Numbers stand as they were written: this quotes the file.
     formats = {name: setting_text for name in used if name not in WORDED}

@@ -20,6 +20,7 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
+from pandas.api.typing import NaTType
 
 from windkit.study.errors import StudyError
 
@@ -105,6 +106,7 @@ def read_ledger(path: Path) -> pd.DataFrame:
             rule="the ledger is text in UTF-8",
             remedy="save it again as UTF-8",
         ) from error
+    _refuse_other_separator(text, path.name)
     reader = csv.DictReader(io.StringIO(text, newline=""))
     header = reader.fieldnames or []
     if text.strip() and list(header) != list(LEDGER_COLUMNS):
@@ -117,6 +119,21 @@ def read_ledger(path: Path) -> pd.DataFrame:
         )
     rows = [_checked(row, path.name, reader.line_num) for row in reader]
     return ledger_of(rows)
+
+
+def _refuse_other_separator(text: str, file: str) -> None:
+    """Refuse lines whose fields are set apart by semicolons or tabs, as some spreadsheets do."""
+    for line, written in enumerate(text.splitlines(), start=1):
+        for sign, word in ((";", "semicolons"), ("\t", "tabs")):
+            if written.count(sign) >= len(LEDGER_COLUMNS) - 1 > written.count(","):
+                raise StudyError.of(
+                    file=file,
+                    line=line,
+                    met=f"the fields are set apart by {word}",
+                    rule="fields of the ledger are set apart by commas",
+                    remedy="save it again as CSV with commas; a spreadsheet asks for the separator "
+                    "when it exports, or takes it from the list separator of its language",
+                )
 
 
 def _checked(row: dict[str, str | None], file: str, line: int) -> dict[str, object]:
@@ -136,8 +153,8 @@ def _checked(row: dict[str, str | None], file: str, line: int) -> dict[str, obje
         if stamp is pd.NaT or not fields[name].endswith(("Z", "+00:00")):
             raise refuse(
                 f"{name} is '{fields[name]}'",
-                "spans are given in UTC",
-                "write it as 2026-01-31T04:10:00Z",
+                "spans are given in UTC, with a Z behind them",
+                _in_utc(fields[name], stamp),
             )
         checked[name] = stamp
     if not checked["from"] < checked["to"]:  # type: ignore[operator]
@@ -166,6 +183,15 @@ def _checked(row: dict[str, str | None], file: str, line: int) -> dict[str, obje
             f"count is '{fields['count']}'", "count is a whole number", "write 0 if unknown"
         ) from error
     return checked
+
+
+def _in_utc(written: str, stamp: pd.Timestamp | NaTType) -> str:
+    """How a stamp that does not end in Z has to be written."""
+    if not isinstance(stamp, pd.Timestamp):
+        return "write it as 2026-01-31T04:10:00Z"
+    if pd.Timestamp(written).tzinfo is not None:
+        return f"write {stamp.strftime(_STAMP)}, which is the same time"
+    return f"write {stamp.strftime(_STAMP)} if it is UTC; take the clock's offset off if it is not"
 
 
 def write_ledger(ledger: pd.DataFrame, path: Path) -> None:

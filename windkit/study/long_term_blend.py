@@ -9,6 +9,7 @@ series are tried in `long_term_methods`. Reading files and settings is done else
 from __future__ import annotations
 
 from collections.abc import Callable
+from numbers import Integral
 
 import numpy as np
 import pandas as pd
@@ -16,6 +17,8 @@ from numpy.typing import NDArray
 
 from windkit.kernels.blend import Blend, blend_references, campaign_moments
 from windkit.kernels.correction_methods import SectorVeer
+from windkit.study.errors import StudyError
+from windkit.study.long_term_clock import direction_on_clock
 from windkit.study.long_term_inputs import LEAST_LENGTH_RATIO, Inputs, prepare_inputs
 from windkit.study.long_term_methods import method_scores, method_series
 from windkit.study.long_term_result import LongTermCorrection
@@ -101,6 +104,13 @@ def correct_long_term(
     >>> result = correct_long_term(site, references)  # doctest: +SKIP
     >>> result.mean_speed, result.interval(0.8)  # doctest: +SKIP
     """
+    if not isinstance(seed, Integral) or seed < 0:
+        raise StudyError.of(
+            key="seed",
+            met=f"it is {seed!r}",
+            rule="a seed is a whole number from 0 up",
+            remedy="leave it out for 0",
+        )
     tell = progress or (lambda sentence: None)
     tell("joining the records")
     inputs = prepare_inputs(site, references)
@@ -208,19 +218,16 @@ def _directions(
 ) -> tuple[Array | None, Array | None]:
     """Directions of the best reference and the site on the joined clock."""
     name = inputs.references.columns[best]
-    zone = inputs.times.tz
-
-    def on_clock(series: pd.Series) -> Array:
-        if zone is not None:
-            series = series.tz_convert("UTC")
-        return np.asarray(series.reindex(inputs.times), dtype=float)
-
     reference = None
     if reference_directions is not None and name in reference_directions.columns:
-        reference = on_clock(reference_directions[name])
+        reference = direction_on_clock(
+            reference_directions[name], inputs.times, "reference_directions"
+        )
         if not np.isfinite(reference).any():
             reference = None
-    own = None if site_direction is None else on_clock(site_direction)
+    own = None
+    if site_direction is not None:
+        own = direction_on_clock(site_direction, inputs.times, "site_direction")
     return reference, own
 
 

@@ -7,6 +7,7 @@ what cannot be answered is refused with the reason. No statistics beyond daily m
 from __future__ import annotations
 
 import warnings
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -15,6 +16,7 @@ from numpy.typing import NDArray
 
 from windkit.kernels.blend import fill_gaps
 from windkit.study.errors import StudyError
+from windkit.study.long_term_clock import as_records, on_one_clock
 
 __all__ = ["LEAST_LENGTH_RATIO", "Inputs", "prepare_inputs"]
 
@@ -31,6 +33,15 @@ LEAST_OVERLAP = 0.5
 LEAST_RECOVERY = 0.2
 #: How many times longer than the campaign the references' period must be [1]; our choice.
 LEAST_LENGTH_RATIO = 1.5
+#: One value that stands for so long is no wind [day] and at least so many values [1]; our choice.
+STUCK_DAYS, STUCK_VALUES = 15.0, 15
+#: Most values of a record that may be exactly 0 [1], and least mean speed [m/s]: below, it is an
+#: instrument or a code rather than wind. Our choice.
+MOST_ZEROS, LEAST_MEAN = 0.6, 0.3
+#: Rms distance of two records over their means [1] below which one is a copy; our choice.
+COPY_DISTANCE = 2e-3
+#: Fewer references than this at a time are called few [1]; our choice.
+THIN_REFERENCES = 3
 
 
 @dataclass(frozen=True)
@@ -90,16 +101,9 @@ def prepare_inputs(site: pd.Series, references: pd.DataFrame) -> Inputs:
         overlap or too little, the site is constant, the references are no longer than the
         campaign, or no reference can be used.
     """
-    if isinstance(references, pd.Series):
-        references = references.to_frame(references.name or "reference")
-    _check_index(site, "site")
-    _check_index(references, "references")
-    site, references = _same_zone(site.sort_index(), references.sort_index())
-    site, references, step = _same_step(site.astype(float), references.astype(float))
-    notes: list[str] = []
+    site, references, step, notes = on_one_clock(*as_records(site, references))
     site = _without_impossible(site.to_frame("the site"), notes)["the site"]
-    references = _without_impossible(references, notes)
-    references = references.dropna(how="all")
+    references = _without_impossible(references, notes).dropna(how="all")
     if references.empty:
         raise StudyError.of(
             key="references",
@@ -112,6 +116,10 @@ def prepare_inputs(site: pd.Series, references: pd.DataFrame) -> Inputs:
     spans = _span(site.dropna()), _span(references)
     joined = site.reindex(times)
     _check_site(site.dropna(), joined.dropna(), spans, step)
+    constant = [name for name, values in references.items() if not values.max() > values.min()]
+    joined = _without_stuck(joined.to_frame("the site"), step, notes)["the site"]
+    references = _without_stuck(references, step, notes, but=constant)
+    _check_site(joined.dropna(), joined.dropna(), spans, step)
     measured_days = float(joined.notna().sum() * step / pd.Timedelta(days=1))
     campaign = pd.DatetimeIndex(joined.dropna().index)
     if (times[-1] - times[0] + step) < LEAST_LENGTH_RATIO * (campaign[-1] - campaign[0] + step):
@@ -134,6 +142,7 @@ def prepare_inputs(site: pd.Series, references: pd.DataFrame) -> Inputs:
             "is part of the uncertainty."
         )
     set_aside = _unusable(joined, references)
+    set_aside |= _copies(joined, references.drop(columns=list(set_aside)))
     used = references.drop(columns=list(set_aside))
     if used.shape[1] == 0:
         reasons = "; ".join(f"{name}: {why}" for name, why in set_aside.items())
@@ -143,6 +152,7 @@ def prepare_inputs(site: pd.Series, references: pd.DataFrame) -> Inputs:
             rule="a correction needs at least one reference beside the campaign",
             remedy="bring another reference, or check the clock and the missing-value code",
         )
+    _note_thin_years(used, notes)
     return _by_day(times, joined.to_numpy(), used, step, set_aside, notes)
 
 
@@ -181,72 +191,6 @@ def _by_day(
     )
 
 
-def _check_index(data: pd.Series | pd.DataFrame, who: str) -> None:
-    if not isinstance(data.index, pd.DatetimeIndex):
-        raise StudyError.of(
-            key=who,
-            met=f"its index is a {type(data.index).__name__}",
-            rule="both must be indexed by time",
-            remedy="set a DatetimeIndex, the start of each interval in UTC",
-        )
-    if data.index.has_duplicates:
-        repeated = data.index[data.index.duplicated()]
-        raise StudyError.of(
-            key=who,
-            met=f"{len(repeated)} stamps are repeated, the first {repeated[0]}",
-            rule="each instant stands once",
-            remedy="find out which row is right; often a clock change or a file read twice",
-        )
-
-
-def _same_zone(site: pd.Series, references: pd.DataFrame) -> tuple[pd.Series, pd.DataFrame]:
-    zones = site.index.tz, references.index.tz  # type: ignore[attr-defined]
-    if (zones[0] is None) != (zones[1] is None):
-        raise StudyError.of(
-            key="site",
-            met="one of site and references carries a time zone and the other does not",
-            rule="both must be on one clock",
-            remedy="convert both to UTC",
-        )
-    if zones[0] is not None:
-        return site.tz_convert("UTC"), references.tz_convert("UTC")
-    return site, references
-
-
-def _same_step(
-    site: pd.Series, references: pd.DataFrame
-) -> tuple[pd.Series, pd.DataFrame, pd.Timedelta]:
-    """Both at the coarser of their steps, which must divide a day."""
-    steps = []
-    for data, who in ((site, "site"), (references, "references")):
-        if len(data) < 3:
-            raise StudyError.of(
-                key=who,
-                met=f"it has {len(data)} rows",
-                rule="a record has many",
-                remedy="check the file and its period",
-            )
-        stamps = pd.DatetimeIndex(data.index).as_unit("ns").asi8
-        steps.append(pd.Timedelta(int(np.median(np.diff(stamps))), unit="ns"))
-    step = max(steps)
-    if step > pd.Timedelta(days=1) or pd.Timedelta(days=1) % step != pd.Timedelta(0):
-        raise StudyError.of(
-            key="references",
-            met=f"the step of the records is {step}",
-            rule="hourly or daily means are needed, or a step that divides a day",
-            remedy="bring hourly or daily means",
-        )
-    if steps[0] < step:  # an hour or day counts from five sixths of its values on
-        least = int(np.ceil(5 / 6 * (step / steps[0])))
-        site = site.resample(step).mean().where(site.resample(step).count() >= least)
-    if steps[1] < step:
-        least = int(np.ceil(5 / 6 * (step / steps[1])))
-        references = (
-            references.resample(step).mean().where(references.resample(step).count() >= least)
-        )
-    return site, references, step
-
-
 def _without_impossible(data: pd.DataFrame, notes: list[str]) -> pd.DataFrame:
     bad = (data < 0) | (data > HIGHEST_SPEED)
     for column in data.columns[bad.any()]:
@@ -259,6 +203,29 @@ def _without_impossible(data: pd.DataFrame, notes: list[str]) -> pd.DataFrame:
         notes.append(text)
         warnings.warn(text, stacklevel=4)
     return data.mask(bad)
+
+
+def _without_stuck(
+    data: pd.DataFrame, step: pd.Timedelta, notes: list[str], *, but: Sequence[object] = ()
+) -> pd.DataFrame:
+    """Runs of one and the same value set aside: an instrument that stands, or a filled gap."""
+    least = max(STUCK_VALUES, round(STUCK_DAYS * pd.Timedelta(days=1) / step))
+    kept = data.copy()
+    for name in data.columns.difference(list(but), sort=False):
+        values = data[name].dropna()
+        run = (values.diff() != 0).cumsum()
+        stuck = run.groupby(run).transform("size") >= least
+        if not stuck.any():
+            continue
+        first = values[stuck].index[0]
+        text = (
+            f"{name}: {int(stuck.sum())} values set aside because one value stands for "
+            f"{STUCK_DAYS:g} days or more, the first {values[first]:.4g} m/s from {first:%Y-%m-%d}."
+        )
+        notes.append(text)
+        warnings.warn(text, stacklevel=4)
+        kept.loc[stuck.index[stuck], name] = np.nan
+    return kept
 
 
 def _check_site(
@@ -280,6 +247,15 @@ def _check_site(
             rule="a measured wind speed varies",
             remedy="check for a stuck sensor, a wrong column or a missing-value code",
         )
+    calm = float(np.mean(site.to_numpy() == 0))
+    if calm > MOST_ZEROS or site.mean() < LEAST_MEAN:
+        raise StudyError.of(
+            key="site",
+            met=f"{calm:.0%} of its values are 0 and their mean is {site.mean():.2g} m/s",
+            rule=f"a correction needs a mean of at least {LEAST_MEAN:g} m/s and at most "
+            f"{MOST_ZEROS:.0%} zeros",
+            remedy="check the unit, the sensor and whether 0 stands for a missing value",
+        )
 
 
 def _unusable(site: pd.Series, references: pd.DataFrame) -> dict[str, str]:
@@ -289,6 +265,7 @@ def _unusable(site: pd.Series, references: pd.DataFrame) -> dict[str, str]:
         values = references[name].to_numpy()
         there = np.isfinite(values)
         overlap = float(np.mean(there[seen]))
+        zeros = float(np.mean(values[there] == 0)) if there.any() else 0.0
         if not there.any():
             reasons[name] = "holds no value"
         elif overlap < LEAST_OVERLAP:
@@ -297,7 +274,46 @@ def _unusable(site: pd.Series, references: pd.DataFrame) -> dict[str, str]:
             reasons[name] = "constant during the campaign"
         elif there.mean() < LEAST_RECOVERY:
             reasons[name] = f"measured in only {there.mean():.0%} of the references' period"
+        elif zeros > MOST_ZEROS:
+            reasons[name] = f"{zeros:.0%} of its values are 0"
+        elif min(values[there].mean(), values[there & seen].mean()) < LEAST_MEAN:
+            reasons[name] = f"its mean is {values[there].mean():.2g} m/s: check its unit"
     return reasons
+
+
+def _copies(site: pd.Series, references: pd.DataFrame) -> dict[str, str]:
+    """References that repeat another's values, perhaps scaled: two of them are one witness."""
+    values = references.to_numpy()
+    during = values[site.notna().to_numpy()]
+    reasons: dict[str, str] = {}
+
+    def alike(first: Array, second: Array) -> bool:
+        both = np.isfinite(first) & np.isfinite(second)
+        if both.sum() < LEAST_DAYS:
+            return False
+        a, b = first[both] / first[both].mean(), second[both] / second[both].mean()
+        return bool(np.sqrt(np.mean((a - b) ** 2)) < COPY_DISTANCE)
+
+    names = list(references.columns)
+    for k, name in enumerate(names):
+        for j in range(k):
+            twin = names[j] not in reasons and alike(during[:, j], during[:, k])
+            if twin and alike(values[:, j], values[:, k]):
+                reasons[name] = f"has the same values as {names[j]}"
+                break
+    return reasons
+
+
+def _note_thin_years(used: pd.DataFrame, notes: list[str]) -> None:
+    """Say how much of the period rests on few of the references."""
+    times = pd.DatetimeIndex(used.index)
+    measured = used.notna().groupby(np.asarray(times.year * 12 + times.month)).any()
+    years = float((measured.sum(axis=1) < min(THIN_REFERENCES, used.shape[1])).sum() / 12)
+    if years >= 1:
+        notes.append(
+            f"In {years:.1f} years of the period fewer than {THIN_REFERENCES} references were "
+            "measuring; the long-term mean of those years rests on them alone."
+        )
 
 
 def _span(data: pd.Series | pd.DataFrame) -> str:

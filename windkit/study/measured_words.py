@@ -49,7 +49,12 @@ def warnings_of(
         warnings.append(
             f"Recovery of {main.name} is {share:.1%}; {EXPECTED_RECOVERY:.0%} is expected."
         )
+    told: set[frozenset[str]] = set()
     for row in north.itertuples():
+        both = frozenset((str(row.vane), str(row.against)))
+        if both in told:
+            continue  # two vanes against each other are one finding
+        told.add(both)
         if abs(float(row.difference_deg)) > _NORTH_WORTH_A_WORD:  # type: ignore[arg-type]
             warnings.append(
                 f"{row.vane} differs from {row.against} by {row.difference_deg:.1f}° on average: "

@@ -114,7 +114,8 @@ def read_station(settings: StationSettings, folder: Path) -> Reading:
         table, at = table_of(row)
         return f"{table.file} {table.unit_of_rows} {table.line_numbers()[at]}"
 
-    kept, aside = on_the_clock(local, settings, place)
+    files = [(table.file, len(each)) for table, each in zip(tables, stamps, strict=True)]
+    kept, aside = on_the_clock(local, settings, place, files=files)
     in_order = len(kept) == len(local) and bool(np.all(np.diff(kept) == 1))
     frame = pd.DataFrame(
         {

@@ -1,15 +1,12 @@
 """What a person decides: `study.toml`, validated as a whole before anything runs.
 
-Here is the shape of the file below the stations (those are in `stations`), the reading of it,
-and the one translation of validation errors into messages. What the steps do with the values
-is not here.
+Here is the shape of the file below the stations (those are in `stations`) and the reading of it.
+What is said about a fault is in `settings_faults`; what the steps do with the values is not here.
 """
 
 from __future__ import annotations
 
 import datetime as dt
-import difflib
-import json
 import tomllib
 from collections.abc import Mapping
 from pathlib import Path
@@ -29,6 +26,8 @@ from windkit.kernels.roughness import TERRAIN_ROUGHNESS, WIND_ATLAS_CLASSES
 from windkit.study.checks.thresholds import CheckSettings
 from windkit.study.errors import StudyError
 from windkit.study.hub_settings import ConditionsSettings, ProfileSettings
+from windkit.study.settings_faults import explain_fault, fault_key, refuse_patterns, toml_remedy
+from windkit.study.station_draft import OPEN
 from windkit.study.stations import StationSettings
 
 __all__ = [
@@ -325,7 +324,8 @@ def read_settings(file: Path) -> dict[str, Any]:
             remedy="name the study's folder, or make one with `sitestudy new DIR`",
         )
     try:
-        return tomllib.loads(file.read_text(encoding="utf-8"))
+        text = file.read_text(encoding="utf-8")
+        values = tomllib.loads(text)
     except UnicodeDecodeError as error:
         raise StudyError.of(
             file=file.name,
@@ -338,8 +338,17 @@ def read_settings(file: Path) -> dict[str, Any]:
             file=file.name,
             met=str(error),
             rule="the file must be valid TOML: text in quotes, `key = value`, one a line",
-            remedy="mend that line; a key may stand only once in its table",
+            remedy=toml_remedy(text, str(error)),
         ) from None
+    except RecursionError:
+        raise StudyError.of(
+            file=file.name,
+            met="brackets stand in each other hundreds deep",
+            rule="the file must be valid TOML, tables and lists a few deep",
+            remedy="mend it; the template of `sitestudy new DIR` shows the form",
+        ) from None
+    refuse_patterns(values, file)
+    return values
 
 
 def with_overrides(values: Mapping[str, Any], overrides: Mapping[str, Any]) -> dict[str, Any]:
@@ -355,54 +364,40 @@ def with_overrides(values: Mapping[str, Any], overrides: Mapping[str, Any]) -> d
     return merged
 
 
-def _left_from_template(value: Any, path: str = "") -> list[str]:
-    """Keys whose text is still that of the template."""
+def _texts(value: Any, path: str = "") -> list[tuple[str, str]]:
+    """Key and text of every text in the file."""
     if isinstance(value, Mapping):
-        return [key for k, v in value.items() for key in _left_from_template(v, f"{path}.{k}")]
+        return [found for k, v in value.items() for found in _texts(v, f"{path}.{k}")]
     if isinstance(value, list):
-        return [
-            key for i, v in enumerate(value) for key in _left_from_template(v, f"{path}[{i + 1}]")
-        ]
-    return [path.lstrip(".")] if isinstance(value, str) and value.startswith(FILL_IN) else []
+        return [found for i, v in enumerate(value) for found in _texts(v, f"{path}[{i + 1}]")]
+    return [(path.lstrip("."), value)] if isinstance(value, str) else []
 
 
 def parse_settings(values: Mapping[str, Any], *, file: str = SETTINGS_FILE) -> Settings:
     """Validate plain values; every fault found is named with key, value, rule and remedy."""
+    texts = _texts(values)
     blanks = [
-        f"{key}: still the template's text; write your own" for key in _left_from_template(values)
+        f"{key}: still the template's text; write your own"
+        for key, text in texts
+        if text.startswith(FILL_IN)
+    ]
+    asked = [key for key, text in texts if text == OPEN]
+    blanks += [
+        f'{key}: an open question of the draft; write the answer in place of "{OPEN}"'
+        for key in asked
     ]
     faults: list[str] = []
     try:
         settings = Settings.model_validate(values)
     except ValidationError as error:
-        faults = [_explain(fault) for fault in error.errors()]
+        faults = [
+            explain_fault(fault, _keys_beside)
+            for fault in error.errors()
+            if fault_key(fault) not in asked
+        ]
     if blanks or faults:
         raise StudyError("\n".join(f"{file}: {fault}" for fault in [*blanks, *faults]))
     return settings
-
-
-def _explain(fault: Any) -> str:
-    """One validation fault as key, value met, rule, remedy."""
-    key = ".".join(
-        f"[{part + 1}]" if isinstance(part, int) else str(part) for part in fault["loc"]
-    ).replace(".[", "[")
-    rule, kind = fault["msg"].removeprefix("Value error, "), fault["type"]
-    rule = rule.replace("Input should", "it must", 1)
-    if kind == "missing":
-        return (
-            f"{key}: not given; the key is required and never guessed; add a line for it, or take "
-            "the mark # REQUIRED off the template's"
-        )
-    if kind == "extra_forbidden":
-        near = difflib.get_close_matches(str(fault["loc"][-1]), _keys_beside(fault["loc"]), n=1)
-        remedy = f"write {near[0]} if that is meant" if near else "mend or remove it"
-        return f"{key}: unknown key; only keys of the template are read; {remedy}"
-    met = fault["input"]
-    if not key or (kind == "value_error" and isinstance(met, dict)):
-        return f"{key}: {rule}" if key else rule  # about a table as a whole; says what to do
-    shown = json.dumps(met, default=str, ensure_ascii=False)
-    shown = shown if len(shown) <= 80 else shown[:77] + "..."
-    return f"{key}: is {shown}; {rule[0].lower() + rule[1:]}; write a value that keeps this rule"
 
 
 def _keys_beside(place: tuple[int | str, ...]) -> list[str]:

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import datetime as dt
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 
 import numpy as np
 import pandas as pd
@@ -19,8 +19,15 @@ from numpy.typing import NDArray
 
 from windkit.study.clock_changes import Seam, repeated_hours, skipped_hours
 from windkit.study.errors import StudyError
+from windkit.study.file_order import (
+    LONGEST_SEAM,
+    file_parts,
+    refuse_overlaps,
+    shown_stamp,
+    written_runs,
+)
 from windkit.study.stations import StationSettings
-from windkit.study.text_files import RawTable, listed
+from windkit.study.text_files import RawTable, has_digits, listed
 
 __all__ = ["EARLIEST_YEAR", "interval_of", "on_the_clock", "read_stamps", "to_starts"]
 
@@ -91,11 +98,22 @@ def read_stamps(table: RawTable, settings: StationSettings) -> Stamps:
             line=int(lines[unreadable[0]]),
             met=f"{len(unreadable)} of {len(local)} stamps cannot be read: {listed(texts)}",
             rule=expected,
-            remedy='write time_format as the file has it, such as "%d/%m/%Y %H:%M"; if only '
+            remedy=_under_header(table, unreadable, settings)
+            + 'write time_format as the file has it, such as "%d/%m/%Y %H:%M"; if only '
             "these rows are damaged, correct them in a copy of the file",
         )
     _refuse_impossible(table, local, settings)
     return local
+
+
+def _under_header(table: RawTable, unreadable: NDArray[np.intp], settings: StationSettings) -> str:
+    """What to do if the only unreadable stamps are texts in the first rows, such as units."""
+    texts = [str(table.stamps[int(at)]) for at in unreadable]
+    first = np.array_equal(unreadable, np.arange(len(unreadable)))
+    if not first or len(texts) == len(table.stamps) or any(has_digits(text) for text in texts):
+        return ""
+    lines = settings.skip_rows_after_header + len(texts)
+    return f"if these are lines of units, write skip_rows_after_header = {lines}; if not, "
 
 
 def _typed(table: RawTable, settings: StationSettings) -> Stamps:
@@ -191,7 +209,7 @@ def _refuse_impossible(table: RawTable, local: Stamps, settings: StationSettings
     wrong = wrong[_in_period(local[wrong], settings)]
     if len(wrong):
         lines = table.line_numbers()
-        found = [f"{table.unit_of_rows} {lines[at]} has {_shown(local[at])}" for at in wrong]
+        found = [f"{table.unit_of_rows} {lines[at]} has {shown_stamp(local[at])}" for at in wrong]
         raise StudyError.of(
             file=table.file,
             line=int(lines[wrong[0]]),
@@ -212,7 +230,11 @@ def _in_period(local: Stamps, settings: StationSettings) -> NDArray[np.bool_]:
 
 
 def on_the_clock(
-    local: Stamps, settings: StationSettings, place: Callable[[int], str]
+    local: Stamps,
+    settings: StationSettings,
+    place: Callable[[int], str],
+    *,
+    files: Sequence[tuple[str, int]] = (),
 ) -> tuple[NDArray[np.intp], list[tuple[int, str]]]:
     """Which rows stand on the station's clock, in which order, and which are set aside.
 
@@ -224,6 +246,8 @@ def on_the_clock(
         Interval, period to use, and what to do with unsorted and repeated stamps.
     place : callable
         Gives file and line of a row for messages.
+    files : sequence of (str, int)
+        Name and number of rows of each file, in the order read; one file if left out.
 
     Returns
     -------
@@ -245,16 +269,24 @@ def on_the_clock(
     _refuse_too_few(kept, local, settings)
     seams_matter = settings.daylight_saving_seams == "refuse"
     step, ends = interval_of(settings).to_timedelta64(), settings.stamp == "end"
+    parts = file_parts(kept, files or [(settings.name, len(local))])
+    if settings.unsorted_stamps == "refuse":
+        refuse_overlaps(local[kept], parts, settings, least=LONGEST_SEAM)
     if seams_matter:
-        again = repeated_hours(local[kept], step)
+        again = [
+            (first + at, custom)
+            for first, stop in written_runs(local[kept], parts)
+            for at, custom in repeated_hours(local[kept[first:stop]], step)
+        ]
         _refuse_seams(again, "an hour again", local, kept, settings, place)
     steps = np.diff(local[kept])
     backward = np.flatnonzero(steps < np.timedelta64(0, "us"))
     if len(backward):
         if settings.unsorted_stamps == "refuse":
+            refuse_overlaps(local[kept], parts, settings, least=np.timedelta64(0, "us"))
             found = [
-                f"{place(int(kept[at + 1]))} has {_shown(local[kept[at + 1]])} after "
-                f"{_shown(local[kept[at]])}"
+                f"{place(int(kept[at + 1]))} has {shown_stamp(local[kept[at + 1]])} after "
+                f"{shown_stamp(local[kept[at]])}"
                 for at in backward
             ]
             raise StudyError.of(
@@ -269,7 +301,7 @@ def on_the_clock(
     if len(repeated):
         if settings.repeated_stamps == "refuse":
             found = [
-                f"{place(int(kept[at + 1]))} has {_shown(local[kept[at + 1]])} again"
+                f"{place(int(kept[at + 1]))} has {shown_stamp(local[kept[at + 1]])} again"
                 for at in repeated
             ]
             raise StudyError.of(
@@ -309,7 +341,7 @@ def _refuse_seams(
     if not seams:
         return
     found = [
-        f"{place(int(kept[at]))} has {_shown(local[kept[at]])} ({custom} custom)"
+        f"{place(int(kept[at]))} has {shown_stamp(local[kept[at]])} ({custom} custom)"
         for at, custom in seams
     ]
     raise StudyError.of(
@@ -336,12 +368,12 @@ def _refuse_far_blocks(
             continue
         few = f"{min(before, after)} rows lie {'before' if before < after else 'after'} a gap"
         raise StudyError.of(
-            met=f"{settings.name}: {few} from {_shown(times[at])} ({place(int(kept[at]))}) to "
-            f"{_shown(times[at + 1])} ({place(int(kept[at + 1]))})",
+            met=f"{settings.name}: {few} from {shown_stamp(times[at])} ({place(int(kept[at]))}) to "
+            f"{shown_stamp(times[at + 1])} ({place(int(kept[at + 1]))})",
             rule="a record has no few rows more than a year from the rest; a logger whose clock "
             "is not set stamps them so",
             remedy=f"write use_from or use_until to leave them out, such as use_from = "
-            f"{_shown(times[at + 1])[:10]}",
+            f"{shown_stamp(times[at + 1])[:10]}",
         )
 
 
@@ -367,7 +399,7 @@ def _refuse_off_grid(
             "record's interval",
         )
     if len(off):
-        found = [f"{place(int(kept[at]))} has {_shown(local[kept[at]])}" for at in off]
+        found = [f"{place(int(kept[at]))} has {shown_stamp(local[kept[at]])}" for at in off]
         raise StudyError.of(
             met=f"{settings.name}: {len(off)} of {len(times)} stamps lie between the steps of "
             f"{settings.interval_min:g} minutes: {listed(found)}",
@@ -384,8 +416,3 @@ def to_starts(local: Stamps, settings: StationSettings) -> pd.DatetimeIndex:
         shift = shift + interval_of(settings)
     index = pd.DatetimeIndex(local, name="time") - shift
     return index.as_unit("ns").tz_localize("UTC")
-
-
-def _shown(stamp: np.datetime64) -> str:
-    text = str(stamp.astype("datetime64[s]")).replace("T", " ")
-    return text.removesuffix(":00")

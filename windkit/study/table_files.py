@@ -24,10 +24,12 @@ from windkit.study.errors import StudyError
 from windkit.study.stations import ChannelSettings, StationSettings
 from windkit.study.text_files import (
     RawTable,
+    has_digits,
     listed,
     missing_column,
     missing_numbers,
     number_in,
+    remedy_for_texts,
 )
 
 __all__ = ["file_hash", "read_netcdf", "read_parquet", "read_sheet"]
@@ -184,24 +186,34 @@ def read_sheet(path: Path, written: str, settings: StationSettings) -> RawTable:
         for number, row in enumerate(rows[first:], start=first + 1)
         if any(cell is not None for cell in row)
     ]
-    columns, faults = {}, []
+    columns: dict[str, Values] = {}
+    faults: list[tuple[int, str, str]] = []
     for place, name in enumerate(wanted[1:], start=1):
         values = np.full(len(body), np.nan)
         for row, (number, cells) in enumerate(body):
             value = _cell(cells[place], settings)
             if value is None:
-                faults.append(f"row {number} has '{cells[place]}' in '{name}'")
+                faults.append((number, name, str(cells[place])))
             else:
                 values[row] = value
         for code in missing_numbers(settings):
             values[values == code] = np.nan
         columns[name] = values
     if faults:
+        faults.sort()
+        found = [f"row {number} has '{text}' in '{name}'" for number, name, text in faults]
+        sound = (cell for _, cells in body for cell in cells[1:] if isinstance(cell, str))
+        data = next((number for number, cells in body if has_digits(str(cells[0]))), first + 1)
         raise StudyError.of(
             file=written,
-            met=f"{len(faults)} cells are not numbers: {listed(faults)}",
+            met=f"{len(faults)} cells are not numbers: {listed(found)}",
             rule="declared columns hold numbers, or a text that is declared to mean no value",
-            remedy="list such texts in missing, or correct the cells in a copy",
+            remedy=remedy_for_texts(
+                [text for _, _, text in faults],
+                sound,
+                settings,
+                under=data - first - 1 if faults[-1][0] < data else 0,
+            ),
         )
     lines = np.array([number for number, _ in body], dtype=np.int64)
     stamps = _sheet_stamps([cells[0] for _, cells in body], lines, written)

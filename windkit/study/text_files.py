@@ -10,7 +10,8 @@ from __future__ import annotations
 
 import difflib
 import io
-from collections.abc import Callable, Sequence
+import re
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -23,10 +24,21 @@ from windkit.study.errors import StudyError
 from windkit.study.stations import StationSettings
 from windkit.study.text_source import TextSource, open_text, split_fields
 
-__all__ = ["RawTable", "listed", "missing_column", "missing_numbers", "number_in", "read_text"]
+__all__ = [
+    "RawTable",
+    "has_digits",
+    "listed",
+    "missing_column",
+    "missing_numbers",
+    "number_in",
+    "read_text",
+    "remedy_for_texts",
+]
 
 #: How many faults a message lists before it only counts them.
 _LISTED = 5
+#: A text with fewer digits than this is no stamp: a date and an hour have more.
+_LEAST_DIGITS = 6
 _DELIMITERS = {",": '","', ";": '";"', "\t": '"\\t"', "|": '"|"'}
 
 
@@ -275,19 +287,58 @@ def _numbers(
         columns[name] = values
     if faults:
         faults.sort()
-        codes = sorted({text for _, _, text in faults})
         found = [f"line {line} has '{text}' in '{name}'" for line, name, text in faults]
-        shown = ", ".join(f'"{code}"' for code in [*settings.missing, *codes[:_LISTED]])
+        sound = (field for fields in rows for field in fields[1:])
+        above = next((at for at, fields in enumerate(rows) if has_digits(fields[0])), 0)
+        under = lines[above] - lines[0] if faults[-1][0] < lines[above] else 0
         raise StudyError.of(
             file=written,
             line=faults[0][0],
             met=f"{_counted(len(faults), 'field is', 'fields are')} not a number: {listed(found)}",
             rule=f"declared columns hold numbers with decimal = "
             f'"{settings.decimal}", or a text that is declared to mean no value',
-            remedy=f"write missing = [{shown}] if these mean no value; correct decimal or the "
-            "file if not",
+            remedy=remedy_for_texts([text for _, _, text in faults], sound, settings, under=under),
         )
     return columns
+
+
+def has_digits(text: str) -> bool:
+    """Whether a text may be a stamp at all; units and other words under a header are not."""
+    return sum(sign.isdigit() for sign in text) >= _LEAST_DIGITS
+
+
+def remedy_for_texts(
+    texts: Sequence[str], fields: Iterable[str], settings: StationSettings, *, under: int
+) -> str:
+    """What to write where texts stand among numbers.
+
+    Parameters
+    ----------
+    texts : sequence of str
+        Fields that are no numbers.
+    fields : iterable of str
+        All fields of the declared columns, the sound ones too.
+    settings : StationSettings
+        Decimal sign, lines under the header and texts that are declared.
+    under : int
+        Lines under the header that hold all of `texts` and have no stamp; 0 if there are none.
+    """
+    if under:
+        lines = settings.skip_rows_after_header + under
+        return (
+            f"write skip_rows_after_header = {lines}: what stands there has no stamp and looks "
+            "like units"
+        )
+    sign = "," if settings.decimal == "." else "."
+    other = re.compile(rf"[-+]?\d+{re.escape(sign)}\d+")
+    swapped = sum(bool(other.fullmatch(text)) for text in texts)
+    if 2 * swapped > len(texts):
+        declared = re.compile(rf"[-+]?\d+{re.escape(settings.decimal)}\d+")
+        if not any(declared.fullmatch(field.strip()) for field in fields):
+            return f'write decimal = "{sign}"'
+    codes = sorted(set(texts))[:_LISTED]
+    shown = ", ".join(f'"{code}"' for code in [*settings.missing, *codes])
+    return f"write missing = [{shown}] if these mean no value; correct decimal or the file if not"
 
 
 def number_in(text: str, decimal: str) -> float | None:

@@ -18,7 +18,7 @@ def small(tmp_path: Path) -> Path:
 
 @pytest.fixture(scope="session")
 def finished_once(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    """The small study with all five artifacts, made once; to be read, not written to."""
+    """The small study with all six artifacts, made once; to be read, not written to."""
     from tests.small_study import make_small_study, run_steps
 
     folder = make_small_study(tmp_path_factory.mktemp("finished") / "study")

@@ -18,6 +18,7 @@ import pandas as pd
 from scipy.signal import lfilter
 
 from windkit.study.artifacts import save_artifact
+from windkit.study.conditions import assess_conditions
 from windkit.study.energy_yield import compute_yield
 from windkit.study.folder import open_study
 from windkit.study.long_term import correct_to_long_term
@@ -324,8 +325,10 @@ def run_steps(
             outcome = correct_to_long_term(study).outcome
         elif step == "yield":
             outcome = compute_yield(study).outcome
-        else:
+        elif step == "uncertainty":
             outcome = assess_uncertainty(study).outcome
+        else:
+            outcome = assess_conditions(study).outcome
         save_artifact(study, outcome)
 
 

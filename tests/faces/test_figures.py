@@ -32,6 +32,25 @@ RECOVERY = pd.DataFrame(
     {"a": [0.9999, np.nan], "b": [1.0, 0.0]}, index=pd.period_range("2022-11", periods=2, freq="M")
 )
 
+SEASONS = pd.DataFrame(
+    {"Dec-Feb": np.linspace(0.1, 0.2, 24), "Jun-Aug": np.linspace(0.3, 0.1, 24)}, index=range(24)
+)
+LEVELS = pd.DataFrame(
+    {
+        "return_period_years": [2.0, 10.0, 50.0],
+        "level_m_s": [25.0, 29.0, 32.0],
+        "low_m_s": [24.0, 28.0, 30.0],
+        "high_m_s": [26.0, 30.0, 34.0],
+    }
+)
+ERRORS = pd.DataFrame(
+    {
+        "by": ["all", "hour", "hour", "season", "sector"],
+        "group": ["all", "00", "12", "Jun-Aug", "90°"],
+        "error": [0.01, 0.02, -0.01, 0.015, 0.005],
+    }
+)
+
 FIT = {"f": ([0, 9], [0, 9])}
 
 DRAWINGS = {
@@ -60,6 +79,26 @@ DRAWINGS = {
     ),
     "exceedance_curves": lambda ax: figures.exceedance_curves(45000, {1: 0.09, 10: 0.07}, ax=ax),
     "tornado": lambda ax: figures.tornado(["a", "b"], [40, 44], [50, 46], 45, ax=ax),
+    "exponent_by_hour": lambda ax: figures.exponent_by_hour(SEASONS, ax=ax),
+    "density_by_month": lambda ax: figures.density_by_month(
+        [1, 6, 7], [1.21, 1.17, 1.16], [1.24, np.nan, 1.19], mean=1.18, ax=ax
+    ),
+    "turbulence_against_classes": lambda ax: figures.turbulence_against_classes(
+        [8, 10, 15],
+        [0.2, 0.19, 0.18],
+        {"class A": [0.22, 0.21, 0.18]},
+        mean=[0.1, 0.1, 0.1],
+        effective=[np.nan, np.nan, np.nan],
+        judged=(9, 25),
+        ax=ax,
+    ),
+    "return_levels": lambda ax: figures.return_levels(
+        [1.0, 2.0, 20.0],
+        [22.0, 25.0, 31.0],
+        LEVELS,
+        limits={"class II": 42.5, "the machine": 42.5, "class III": 37.5},
+        ax=ax,
+    ),
 }
 
 
@@ -200,6 +239,48 @@ def test_a_figure_without_data_says_why_it_is_empty() -> None:
     turbulence = figures.turbulence_by_speed([], [], [])
     assert ratio.texts[0].get_text() == "one sensor only at this height"
     assert "no standard deviation" in turbulence.texts[0].get_text()
+
+
+def test_maxima_of_a_gumbel_law_are_a_straight_line_on_paper():
+    # id EXT-5: the reduced variate -ln(-ln(1 - 1/T)) of T = 2, 10, 50 is 0.366513, 2.250367,
+    # 3.901939.
+    lines = DRAWINGS["return_levels"](None).get_lines()
+    line = next(each for each in lines if each.get_label() == "fit")
+    assert line.get_xdata() == pytest.approx([0.366513, 2.250367, 3.901939], abs=1e-6)
+    assert line.get_ydata().tolist() == [25.0, 29.0, 32.0]
+    points = next(each for each in lines if each.get_label() == "maxima by rank")
+    # The lowest of all maxima has no return period above one year and no place on the paper.
+    assert points.get_ydata().tolist() == [25.0, 31.0]
+
+
+def test_limits_that_are_alike_share_a_line_and_their_names():
+    ax = DRAWINGS["return_levels"](None)
+    assert [text.get_text() for text in ax.texts] == ["class II, the machine", "class III"]
+
+
+def test_errors_of_a_height_left_out_stand_in_three_panels():
+    hour, season, sector = figures.errors_of_height_left_out(ERRORS)
+    assert [bar.get_height() for bar in hour.patches] == [0.02, -0.01]
+    assert [bar.get_height() for bar in season.patches] == [0.015]
+    assert [bar.get_height() for bar in sector.patches] == [0.005]
+    assert hour.get_ylim()[0] < -0.01
+    given = plt.subplots(1, 3)[1]
+    assert figures.errors_of_height_left_out(ERRORS, ax=given)[0] is given[0]
+
+
+def test_conditions_without_data_say_so() -> None:
+    empty = pd.DataFrame(columns=["by", "group", "error"])
+    assert figures.errors_of_height_left_out(empty)[0].texts[0].get_text() == (
+        "fewer than three heights"
+    )
+    assert figures.turbulence_against_classes([], [], {}).texts[0].get_text() == (
+        "turbulence is not assessed"
+    )
+    assert figures.return_levels([], [], LEVELS.iloc[:0]).texts[0].get_text() == (
+        "extreme winds are not assessed"
+    )
+    level = figures.exponent_by_hour(pd.DataFrame({"Dec-Feb": [np.nan] * 24}))
+    assert level.texts[0].get_text() == "mast and hub are at one height"
 
 
 def test_the_campaign_is_shaded_exactly() -> None:

@@ -57,7 +57,12 @@ def save_long_term(
     save_artifact(open_study(folder), Outcome("long_term", rows(values), {"series": series}))
 
 
-def save_yield(folder: Path, *, p50: float, sensitivity: float) -> None:
-    """A net energy [MWh/year] and what one per cent of speed is worth."""
-    values = {"energy.net_p50_mwh_per_year": p50, "energy.sensitivity": sensitivity}
+def save_yield(folder: Path, *, p50: float, sensitivity: float, way_up: float = 0.0) -> None:
+    """A net energy [MWh/year], what one per cent of speed is worth, how sure the way up is."""
+    values = {
+        "energy.net_p50_mwh_per_year": p50,
+        "energy.sensitivity": sensitivity,
+        "hub.mean_speed_m_s": 8.0,
+        "hub.extrapolation_standard_uncertainty": way_up,
+    }
     save_artifact(open_study(folder), Outcome("yield", rows(values)))

@@ -18,6 +18,8 @@ from windkit.study.steps import STEPS
 from windkit.study.uncertainty import assess_uncertainty
 
 NAMES = [step.name for step in STEPS]
+#: The yield step and all that stands on it.
+AFTER_YIELD = {"yield", "uncertainty", "conditions"}
 
 
 def fresh(folder) -> dict[str, bool]:
@@ -80,16 +82,16 @@ def test_comments_and_the_order_of_keys_make_nothing_stale(finished):
 @pytest.mark.parametrize(
     ("old", "new", "stale"),
     [
-        ("hub_height_m = 90.0", "hub_height_m = 91.0", {"screen", "yield", "uncertainty"}),
+        ("hub_height_m = 90.0", "hub_height_m = 91.0", {"screen", *AFTER_YIELD}),
         ("weibull_k = 2.0", "weibull_k = 2.1", {"screen"}),
-        ("loss = 0.08", "loss = 0.07", {"yield", "uncertainty"}),
+        ("loss = 0.08", "loss = 0.07", AFTER_YIELD),
         ("standard_uncertainty = 0.04", "standard_uncertainty = 0.05", {"uncertainty"}),
-        ("speed_factor = 1.05", "speed_factor = 1.06", {"yield", "uncertainty"}),
-        ("sector_count = 4", "sector_count = 6", {"long_term", "yield", "uncertainty"}),
-        ('"variance_ratio"', '"ratio"', {"long_term", "yield", "uncertainty"}),
+        ("speed_factor = 1.05", "speed_factor = 1.06", AFTER_YIELD),
+        ("sector_count = 4", "sector_count = 6", {"long_term", *AFTER_YIELD}),
+        ('"variance_ratio"', '"ratio"', {"long_term", *AFTER_YIELD}),
         ("[turbine]", "[checks]\nmark_gust_m_s = 31.0\n\n[turbine]",
-         {"measure", "long_term", "yield", "uncertainty"}),
-        ("height_m = 58.0", "height_m = 57.0", {"measure", "long_term", "yield", "uncertainty"}),
+         {"measure", "long_term", *AFTER_YIELD}),
+        ("height_m = 58.0", "height_m = 57.0", {"measure", "long_term", *AFTER_YIELD}),
         ('title = "Three', 'title = "Two and one', set()),
     ],
 )  # fmt: skip
@@ -101,10 +103,10 @@ def test_a_decision_makes_stale_what_stands_on_it_and_nothing_else(finished, old
 @pytest.mark.parametrize(
     ("name", "stale"),
     [
-        ("data/mast.csv", {"measure", "long_term", "yield", "uncertainty"}),
-        ("data/far_skerry.csv", {"measure", "long_term", "yield", "uncertainty"}),
-        ("data/curve.csv", {"screen", "measure", "long_term", "yield", "uncertainty"}),
-        ("ledger.csv", {"measure", "long_term", "yield", "uncertainty"}),
+        ("data/mast.csv", {"measure", "long_term", *AFTER_YIELD}),
+        ("data/far_skerry.csv", {"measure", "long_term", *AFTER_YIELD}),
+        ("data/curve.csv", {"screen", "measure", "long_term", *AFTER_YIELD}),
+        ("ledger.csv", {"measure", "long_term", *AFTER_YIELD}),
     ],
 )
 def test_a_changed_file_makes_stale_what_stands_on_it(finished, name, stale):
@@ -135,7 +137,7 @@ def test_a_step_run_anew_makes_those_after_it_stale(finished):
     edit(finished / "study.toml", "height_m = 58.0", "height_m = 57.0")
     run_steps(finished, "measure")
     assert first_stale_step(open_study(finished)) == "long_term"
-    run_steps(finished, "long_term", "yield", "uncertainty")
+    run_steps(finished, "long_term", "yield", "uncertainty", "conditions")
     assert first_stale_step(open_study(finished)) is None
 
 

@@ -64,7 +64,11 @@ def test_a_departure_from_the_file_is_shown(finished):
     assert collect_results(open_study(finished))[0]["departures"] == {}
     before = collect_results(open_study(finished))[0]["energy"]["net_p50_mwh_per_year"]
     run_steps(
-        finished, "yield", "uncertainty", overrides={"yield": {"turbine.hub_height_m": 110.0}}
+        finished,
+        "yield",
+        "uncertainty",
+        "conditions",
+        overrides={"yield": {"turbine.hub_height_m": 110.0}},
     )
     results, _ = collect_results(open_study(finished))
     assert results["departures"] == {"yield": {"turbine.hub_height_m": 110.0}}

@@ -12,6 +12,7 @@ from scipy import integrate, stats
 from scipy.special import gamma
 
 from tests.small_study import CURVE, edit
+from windkit.study.errors import StudyError
 from windkit.study.folder import open_study
 from windkit.study.screening import screen
 
@@ -151,3 +152,60 @@ def test_more_doubt_about_the_wind_widens_the_range_only(small):
         assert 0 <= low < found.number("screening.gross_mwh_per_year") < high
         widths.append(high - low)
     assert widths == sorted(widths)
+
+
+def grounded(small, lines: str, *, hub: float, height: float, latitude: float = 46.0):
+    """The small study's screening over a kind of ground instead of with an exponent."""
+    file = small / "study.toml"
+    edit(file, "shear_exponent = 0.15", lines)
+    edit(file, "height_m = 50.0\nweibull", f"height_m = {height}\nweibull")
+    edit(file, "hub_height_m = 90.0", f"hub_height_m = {hub}")
+    edit(file, "latitude_deg = 46.0", f"latitude_deg = {latitude}")
+    return open_study(small)
+
+
+@pytest.mark.parametrize(
+    ("lines", "ratio"),
+    # id SHR-3: U80/U10 of the log law over 0.0002, 0.03, 0.1 and 0.4 m (id SHR-2: classes 0 to 3).
+    [
+        ("roughness_class = 0.0", 1.19219),
+        ("roughness_class = 1.0", 1.35796),
+        ('terrain = "roughly open"', 1.45154),
+        ("roughness_class = 3.0", 1.64601),
+    ],
+)
+def test_the_ground_in_place_of_an_exponent(small, lines, ratio):
+    found = screen(grounded(small, lines, hub=80.0, height=10.0))
+    assert found.hub_mean_speed / 6.5 == pytest.approx(ratio, abs=1e-5)
+    assert "log law over a roughness" in found.outcome.rows[0].basis
+    assert "roughness length halved or doubled" in found.drivers["assumption"].tolist()
+
+
+def test_the_drag_law_moves_a_figure_from_sea_to_land(small):
+    # id SHR-6b: under one geostrophic wind of 10 m/s at f = 1.2e-4 1/s (latitude 55.37 deg),
+    # 7.16417 m/s at 10 m over 0.0002 m go with 7.55571 m/s at 100 m over 0.03 m.
+    latitude = float(np.degrees(np.arcsin(1.2e-4 / (2 * 7.292_115e-5))))
+    lines = "roughness_class = 1.0\nfigure_roughness_class = 0.0"
+    study = grounded(small, lines, hub=100.0, height=10.0, latitude=latitude)
+    found = screen(study)
+    # The law is close to proportional: 6.5 m/s in place of 7.16417.
+    assert found.hub_mean_speed == pytest.approx(6.5 * 7.55571 / 7.16417, rel=5e-3)
+    exact = open_study(small, {"screening.mean_wind_speed_m_s": 7.16417})
+    assert screen(exact).hub_mean_speed == pytest.approx(7.55571, abs=1e-4)
+    assert "for screening only" in found.outcome.rows[0].basis
+
+
+@pytest.mark.parametrize(
+    ("lines", "latitude", "told"),
+    [
+        ("shear_exponent = 0.2\nroughness_class = 1.0", 46.0, "stand side by side"),
+        ("roughness_class = 1.3", 46.0, "it must be one of 0, 0.5"),
+        ('terrain = "forest"', 46.0, "it must be one of sea"),
+        ("figure_roughness_class = 1.0", 46.0, "write roughness_class or terrain"),
+        ("roughness_class = 1.0\nfigure_roughness_class = 0.0", 2.0, "5 degrees from the equator"),
+    ],
+)
+def test_a_ground_that_cannot_be_is_refused(small, lines, latitude, told):
+    with pytest.raises(StudyError) as caught:
+        screen(grounded(small, lines, hub=80.0, height=10.0, latitude=latitude))
+    assert told in str(caught.value)

@@ -21,6 +21,8 @@ def assessed(
     yearly: float = 0.0,
     p50: float = 100.0,
     sensitivity: float = 1.0,
+    way_up: float = 0.0,
+    reason: str = "",
 ) -> Uncertainty:
     """The last step on hand-made figures; stated causes are (group, of, value, varies)."""
     file = folder / "study.toml"
@@ -28,10 +30,11 @@ def assessed(
     for number, (group, of, value, varies) in enumerate(stated):
         text += f'[[uncertainties]]\ngroup = "{group}"\nname = "cause {number}"\nof = "{of}"\n'
         text += f'standard_uncertainty = {value}\nvaries = "{varies}"\nbasis = "by hand"\n'
+        text += f'reason_over_computed = "{reason}"\n' if reason else ""
     file.write_text(text)
     save_measured(folder)
     save_long_term(folder, standard_uncertainty=long_term, yearly_variability=yearly)
-    save_yield(folder, p50=p50, sensitivity=sensitivity)
+    save_yield(folder, p50=p50, sensitivity=sensitivity, way_up=way_up)
     return assess_uncertainty(open_study(folder))
 
 
@@ -143,7 +146,7 @@ def test_longer_periods_and_lower_probabilities_are_in_order(small):
 def test_no_uncertainty_at_all_leaves_p50(small):
     found = assessed(small)
     assert (found.level_table == 100.0).all().all()
-    assert found.parts["share_of_ten_year_variance"].tolist() == [0.0, 0.0]
+    assert (found.parts["share_of_ten_year_variance"] == 0.0).all()
     json.dumps([row.value for row in found.outcome.rows], allow_nan=False)
 
 
@@ -163,3 +166,54 @@ def test_a_changed_cause_is_a_stale_answer(finished):
     edit(finished / "study.toml", "standard_uncertainty = 0.04", "standard_uncertainty = 0.05")
     after = assess_uncertainty(open_study(finished)).levels
     assert (after["P90"] < before["P90"]).all()
+
+
+def wind_parts(found: Uncertainty) -> dict[str, float]:
+    """Standard uncertainty of wind by name, for the way up."""
+    up = found.parts[found.parts["group"] == "vertical_extrapolation"]
+    return dict(zip(up["name"], up["standard_uncertainty"], strict=True))
+
+
+def test_the_way_up_is_computed_and_enters_once(small):
+    # By hand: 1.5 x 0.02 of the way up and 1.5 x 0.03 of the correction make 5.41 % of energy.
+    found = assessed(small, long_term=0.03, sensitivity=1.5, way_up=0.02)
+    assert wind_parts(found) == {"from the mast to the hub": 0.02}
+    assert found.outcome.number("uncertainty.static") == pytest.approx(1.5 * np.hypot(0.02, 0.03))
+
+
+def test_of_a_stated_and_a_computed_way_up_the_larger_is_used(small, tmp_path):
+    stated = [("vertical_extrapolation", "wind_speed", 0.01, "static")]
+    found = assessed(small, stated, way_up=0.02)
+    assert wind_parts(found) == {"from the mast to the hub": 0.02}
+    assert "computes 2.00% of wind speed, stated are 1.00%" in found.parts["basis"].iloc[2]
+    assert wind_parts(assessed(small, stated, way_up=0.005)) == {"cause 0": 0.01}
+    # A figure in energy is compared as wind: 1.5 % of energy are 1 % of wind at 1.5.
+    stated = [("vertical_extrapolation", "energy", 0.015, "static")]
+    assert wind_parts(assessed(small, stated, way_up=0.02, sensitivity=1.5)) == {
+        "from the mast to the hub": 0.02
+    }
+
+
+def test_a_reason_lets_the_stated_way_up_stand(small):
+    stated = [("vertical_extrapolation", "wind_speed", 0.01, "static")]
+    found = assessed(small, stated, way_up=0.02, reason="a lidar stood beside the mast")
+    assert wind_parts(found) == {"cause 0": 0.01}
+    basis = found.parts.set_index("name").loc["cause 0", "basis"]
+    assert "used all the same: a lidar stood beside the mast" in basis
+
+
+def test_the_interval_at_the_hub_is_that_of_the_wind_above_the_mast(small):
+    # id UNC-2: 80 % lie within 1.28155 standard deviations; the mean is 8 m/s. Places of the
+    # turbines and causes of energy have no part in it.
+    stated = [
+        ("measurement", "wind_speed", 0.02, "static"),
+        ("horizontal_extrapolation", "wind_speed", 0.05, "static"),
+        ("plant_performance", "energy", 0.05, "static"),
+    ]
+    found = assessed(small, stated, long_term=0.03, yearly=0.06, way_up=0.01).outcome
+    own = np.sqrt(0.02**2 + 0.03**2 + 0.01**2)
+    assert found.number("hub.standard_uncertainty") == pytest.approx(own)
+    low, high = found.value("hub.interval_80_m_s")
+    assert (low, high) == pytest.approx(
+        (8 * (1 - 1.28155 * own), 8 * (1 + 1.28155 * own)), rel=1e-5
+    )

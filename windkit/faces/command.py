@@ -88,8 +88,8 @@ def _parser() -> argparse.ArgumentParser:
         "--from",
         dest="from_step",
         metavar="STEP",
-        help="begin at this step (screen, measure, long_term, yield, uncertainty); those before "
-        "it must be up to date",
+        help="begin at this step (screen, measure, long_term, yield, uncertainty, conditions); "
+        "those before it must be up to date",
     )
     run.add_argument(
         "--set",

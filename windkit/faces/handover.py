@@ -32,6 +32,7 @@ _SUMMARY_KEYS = {
     "long_term.mean_speed_m_s",
     "long_term.interval_80_m_s",
     "hub.mean_speed_m_s",
+    "hub.interval_80_m_s",
     "hub.air_density_kg_m3",
     "energy.gross_mwh_per_year",
     "energy.total_loss",
@@ -40,16 +41,27 @@ _SUMMARY_KEYS = {
     "energy.sensitivity",
     "uncertainty.static",
     "uncertainty.yearly",
+    "conditions.v50_m_s",
+    "conditions.turbulence_class",
+    "conditions.verdict.outside",
+    "conditions.verdict.not_assessed",
 }
 _SUMMARY_SENTENCES = (
     ("long_term", "correction"),
     ("yield", "losses"),
     ("uncertainty", "levels"),
     ("uncertainty", "narrowing"),
+    ("conditions", "verdict"),
 )
 
 #: Tables of the artifacts that are too long for a spreadsheet; they stay in results/ as Parquet.
-_LEFT_OUT = {("measure", "record"), ("measure", "main"), ("long_term", "series")}
+_LEFT_OUT = {
+    ("measure", "record"),
+    ("measure", "main"),
+    ("long_term", "series"),
+    ("yield", "hub_series"),
+    ("yield", "air_temperature"),
+}
 
 
 @dataclass(frozen=True)

@@ -6,13 +6,20 @@ is computed here.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
-from windkit.faces.tables import WORDED, Table, exceedance_table_view, results_table, value_text
-from windkit.faces.wording import MISSING, as_printed, percent_text
+from windkit.faces.tables import (
+    WORDED,
+    Table,
+    exceedance_table_view,
+    results_table,
+    value_text,
+)
+from windkit.faces.wording import MISSING, as_printed, percent_text, unit_text
 from windkit.study.artifacts import Outcome
 from windkit.study.folder import Study
+from windkit.study.verdict import TURBULENCE, verdict_matrix
 
 __all__ = [
     "Said",
@@ -25,9 +32,13 @@ __all__ = [
     "say",
     "setting_text",
     "settings",
+    "verdict",
     "warnings",
     "written",
 ]
+
+#: Groups held against no more than these are shown as rows.
+_FEW_COLUMNS = ("every class", "normal range", "extreme range", "the machine")
 
 
 class Said:
@@ -87,6 +98,35 @@ def written(outcome: Outcome) -> Said:
     return Said(f"Written to results/{outcome.step}/: artifact.json, {files}.")
 
 
+def verdict(outcome: Outcome, group: str) -> Table:
+    """One group of the verdict: words by class where there are classes, else rows with limits."""
+    table = outcome.tables["verdict"]
+    caption = f"Verdict: {group}"
+    part = table[table["group"] == group].drop(columns="group")
+    if part["against"].nunique() > len(_FEW_COLUMNS):
+        shown = verdict_matrix(table, group)
+        shown["Site"] = _with_units(shown["Site"], shown["Unit"], group)
+        return Table(shown.drop(columns="Unit"), caption=caption)
+    if part["limit"].isna().all():
+        return Table(part[["condition", "verdict", "note"]], caption=caption, quiet=["note"])
+    part = part.assign(
+        site=_with_units(part["site"], part["unit"], group),
+        limit=_with_units(part["limit"], part["unit"], group),
+    )
+    return Table(part.drop(columns="unit"), caption=caption, quiet=["note"])
+
+
+def _with_units(values: Iterable[Any], units: Iterable[str], group: str) -> list[str]:
+    """Each value as a person reads it, turbulence in per cent."""
+    texts = []
+    for value, unit in zip(values, units, strict=True):
+        percent = unit == "1" and group == TURBULENCE
+        text = value_text(value, unit, as_percent=percent)
+        sign = "%" if percent else "" if unit == "1" else unit_text(unit)
+        texts.append(f"{text} {sign}".strip())
+    return texts
+
+
 def settings(study: Study, sections: Sequence[str]) -> Table:
     """The decisions this workbook stands on: key, value, and where the value was set.
 
@@ -95,7 +135,7 @@ def settings(study: Study, sections: Sequence[str]) -> Table:
     rows = []
     for section in sections:
         for key, value in study.section(section).items():
-            if value is None or _is_list_of_tables(value):
+            if value in (None, "") or _is_list_of_tables(value):
                 continue
             path = f"{section}.{key}"
             # A parameter may come from the workbook's cell or from the command line.
@@ -108,7 +148,9 @@ def listing(study: Study, path: str) -> Table:
     """A list of tables of `study.toml`, one row an entry: keys that no entry sets are left out."""
     section, _, key = path.partition(".")
     entries = study.section(section)[key] if key else study.section(section)
-    used = [name for name in entries[0] if any(entry[name] not in (None, "", []) for entry in entries)]
+    used = [
+        name for name in entries[0] if any(entry[name] not in (None, "", []) for entry in entries)
+    ]
     rows = [{name: entry[name] for name in used} for entry in entries]
     # Numbers stand as they were written: this quotes the file.
     formats = {name: setting_text for name in used if name not in WORDED}

@@ -78,9 +78,11 @@ _UNIT_BY_ENDING: dict[str, str] = {
     "_w_m2": "W/m2",
     "_m_s": "m/s",
     "_deg": "deg",
+    "_hpa": "hPa",
     "_kw": "kW",
     "_pa": "Pa",
     "_k": "K",
+    "_c": "degC",
     "_h": "h",
     "_m": "m",
 }

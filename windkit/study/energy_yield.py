@@ -1,7 +1,8 @@
 """Step 4, energy yield: from the long-term series to gross, losses and net P50 per turbine.
 
 Energy comes from the long-term series hour by hour through the power curve, never from a mean
-speed. Density acts on the speed (pitch-regulated machines). The profile is the mast's own.
+speed. Density acts on the speed (pitch-regulated machines). The way up to the hub is in `hub`,
+its air in `hub_air`.
 """
 
 from __future__ import annotations
@@ -12,23 +13,27 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from windkit.kernels.air import moist_air_density, pressure_at_height, standard_atmosphere
+from windkit.kernels.air import standard_atmosphere
 from windkit.kernels.curve import PowerCurve, power_at
 from windkit.kernels.energy import HOURS_PER_YEAR, annual_energy, speed_to_energy_sensitivity
 from windkit.kernels.frequency import FrequencyTable, frequency_table
 from windkit.kernels.losses import combine_losses, combine_losses_by_group
-from windkit.kernels.profile import power_law
 from windkit.kernels.weibull import fit_weibull
 from windkit.study.artifacts import Outcome, Row, load_artifact
+from windkit.study.borrowed_air import reference_air, reference_with_air
 from windkit.study.folder import Study
+from windkit.study.hub import HubWind, carry_to_hub
+from windkit.study.hub_air import HubAir, hub_air
+from windkit.study.hub_sentences import said_of_left_out, said_of_profile
+from windkit.study.long_term import reference_record
 from windkit.study.settings import Settings
 from windkit.study.turbine import WATT_HOURS_PER_MWH, read_curve
 
 __all__ = ["EnergyYield", "compute_yield"]
 
-#: Hub heights above this multiple of the mast's main height rest on a long extrapolation:
-#: the mast is then lower than two thirds of the hub (MEASNET site guideline; common practice).
-_HIGHEST_HUB_TO_MAST_RATIO = 1.5
+_NOTHING_LEFT_OUT = pd.DataFrame(
+    columns=["by", "group", "predicted_m_s", "measured_m_s", "error", "count"]
+)
 #: Difference of ground level to the mast that a reviewer should hear of [m], our choice.
 _ELEVATION_WORTH_A_WORD = 150.0
 
@@ -41,6 +46,10 @@ class EnergyYield:
     ----------
     curve : PowerCurve
         The machine's curve.
+    wind : HubWind
+        How the series was carried to the hub.
+    air : HubAir
+        Air there.
     hub_speed : ndarray
         Long-term hourly speed at hub height at the mast [m/s].
     turbines : DataFrame
@@ -50,12 +59,14 @@ class EnergyYield:
     staircase : DataFrame
         Gross, then what is left after each loss [MWh/year].
     frequency : FrequencyTable
-        Of the hub speed, without direction.
+        Of the hub speed by sector.
     outcome : Outcome
         Figures of merit, tables, what was found and warnings.
     """
 
     curve: PowerCurve
+    wind: HubWind
+    air: HubAir
     hub_speed: NDArray[np.float64]
     turbines: pd.DataFrame
     losses: pd.DataFrame
@@ -76,22 +87,26 @@ def compute_yield(study: Study) -> EnergyYield:
     curve = read_curve(study)
     record = measured.tables["record"]
     mast_height = measured.number("measured.height_m")
-    exponent = measured.number("measured.shear_exponent")
-    series = long_term.tables["series"]["wind_speed"].to_numpy()
-    hub_speed = np.asarray(power_law(series, mast_height, turbine.hub_height_m, exponent))
-    hub_speed = hub_speed[np.isfinite(hub_speed)]
-    density, density_basis = _hub_density(settings, record)
-    averaging = _averaging_effect(curve, measured, settings, density)
+    wind = carry_to_hub(settings, measured, record, long_term.tables["series"])
+    air = _hub_air(study, record)
+    known = wind.series["wind_speed"].notna().to_numpy()
+    hub = wind.series[known]
+    hub_speed = hub["wind_speed"].to_numpy()
+    assert isinstance(hub.index, pd.DatetimeIndex)
+    hourly_density = air.at(hub.index)
+    density = air.mean
+    averaging = _averaging_effect(curve, measured, settings, wind, density)
 
     places = settings.layout
     factors = np.array([place.speed_factor for place in places])
-    densities = density * _density_relative_to_mast(settings)
+    relative = _density_relative_to_mast(settings)
+    densities = density * relative
 
     def mean_power(scale: float) -> NDArray[np.float64]:
         return np.array(
             [
-                np.mean(power_at(curve, hub_speed * (factor * scale), air_density))
-                for factor, air_density in zip(factors, densities, strict=True)
+                np.mean(power_at(curve, hub_speed * (factor * scale), hourly_density * share))
+                for factor, share in zip(factors, relative, strict=True)
             ]
         )
 
@@ -119,12 +134,30 @@ def compute_yield(study: Study) -> EnergyYield:
     )
     losses = _loss_table(settings, float(gross.sum()))
     gross_sum, net_sum = float(gross.sum()), float(net.sum())
-    warnings = _warnings(settings, mast_height)
+    exponent = float(np.log(hub_speed.mean() / _mast_mean(long_term)) / _reach(settings, wind))
+    frequency = frequency_table(
+        hub_speed,
+        hub["wind_direction"].to_numpy(dtype=float),
+        sector_count=settings.long_term.sector_count,
+    )
     rows = [
         Row(
             "hub.mean_speed_m_s", "Long-term mean wind speed at hub height", hub_speed.mean(),
-            "m/s", f"long-term series from {mast_height:g} m to {turbine.hub_height_m:g} m by the "
-            f"power law, exponent {exponent:.3f} measured at the mast",
+            "m/s", f"long-term series from {mast_height:g} m to {turbine.hub_height_m:g} m: "
+            f"{wind.basis}",
+        ),
+        Row("hub.height_m", "Hub height", turbine.hub_height_m, "m", "study.toml"),
+        Row(
+            "hub.rated_speed_m_s", "Wind speed at rated power", _rated_speed(curve), "m/s",
+            "lowest speed of the curve with its highest power",
+        ),
+        Row(
+            "hub.shear_exponent", "Shear exponent from mast to hub", exponent, "1",
+            "of the long-term means at both heights",
+        ),
+        Row(
+            "hub.extrapolation_standard_uncertainty", "Standard uncertainty of the way up",
+            wind.standard_uncertainty, "1", wind.uncertainty_basis, as_percent=True,
         ),
         Row(
             "hub.weibull_A_m_s", "Weibull scale A at hub height", weibull.weibull_scale, "m/s",
@@ -135,7 +168,7 @@ def compute_yield(study: Study) -> EnergyYield:
             "same fit",
         ),
         Row(
-            "hub.air_density_kg_m3", "Air density at hub height", density, "kg/m3", density_basis,
+            "hub.air_density_kg_m3", "Air density at hub height", density, "kg/m3", air.basis,
         ),
         Row(
             "energy.averaging_effect", "Energy of ten-minute means over that of hourly means",
@@ -165,9 +198,11 @@ def compute_yield(study: Study) -> EnergyYield:
     ]  # fmt: skip
     largest = max(settings.losses, key=lambda loss: loss.loss, default=None)
     said = {
-        "hub": f"At hub height the long-term mean is {hub_speed.mean():.2f} m/s and the air weighs "
-        f"{density:.3f} kg/m³. On this series one per cent of wind speed is worth "
-        f"{sensitivity:.2f} per cent of energy.",
+        "hub": f"At hub height the long-term mean is {hub_speed.mean():.2f} m/s. On this series "
+        f"one per cent of wind speed is worth {sensitivity:.2f} per cent of energy.",
+        "profile": said_of_profile(wind, exponent),
+        "left_out": said_of_left_out(wind),
+        "air": air.said,
         "turbines": f"The {len(places)} turbines would make {gross_sum:,.0f} MWh a year before "
         f"losses; the best of them, {turbines['turbine'][gross.argmax()]}, makes "
         f"{gross.max() / gross.min() - 1:.1%} more than the poorest.",
@@ -178,46 +213,65 @@ def compute_yield(study: Study) -> EnergyYield:
     }
     return EnergyYield(
         curve=curve,
+        wind=wind,
+        air=air,
         hub_speed=hub_speed,
         turbines=turbines,
         losses=losses,
         staircase=_staircase(settings, gross_sum),
-        frequency=frequency_table(hub_speed, np.full_like(hub_speed, np.nan)),
-        outcome=Outcome("yield", rows, {"turbines": turbines, "losses": losses}, said, warnings),
+        frequency=frequency,
+        outcome=Outcome(
+            "yield",
+            rows,
+            {
+                "hub_series": hub.assign(air_density=hourly_density),
+                "hub_frequency": _frequency_frame(frequency),
+                "hub_methods": wind.methods,
+                "left_out": wind.left_out.table if wind.left_out else _NOTHING_LEFT_OUT,
+                "air_monthly": air.monthly,
+                "air_sources": air.sources,
+                "air_temperature": air.temperature.to_frame(),
+                "turbines": turbines,
+                "losses": losses,
+            },
+            said,
+            [*wind.warnings, *air.warnings, *_warnings(settings)],
+        ),
     )
 
 
-def _hub_density(settings: Settings, record: pd.DataFrame) -> tuple[float, str]:
-    """Mean air density at the mast and hub height [kg/m3], and how it came about."""
-    hub = settings.turbine.hub_height_m
-    found = {
-        quantity: next(
-            (
-                channel
-                for channel in settings.mast.channels
-                if channel.quantity == quantity and channel.statistic == "mean"
-            ),
-            None,
-        )
-        for quantity in ("air_temperature", "air_pressure", "relative_humidity")
-    }
-    temperature, pressure, humidity = found.values()
-    if temperature is None or pressure is None:
-        standard = float(standard_atmosphere(settings.site.elevation_m + hub)[2])
-        return standard, "standard atmosphere (ISO 2533): temperature or pressure is not measured"
-    assert isinstance(record.index, pd.DatetimeIndex)
-    kelvin = record[temperature.name].to_numpy()
-    pascal = pressure_at_height(record[pressure.name].to_numpy(), kelvin, hub - pressure.height_m)
-    wet = record[humidity.name].to_numpy() if humidity is not None else np.zeros_like(kelvin)
-    density = moist_air_density(kelvin, pascal, wet)
-    # Months first, so that a gap in winter does not make the year's air thin.
-    monthly = pd.Series(density, index=record.index).groupby(record.index.month).mean()
-    told = (
-        "temperature, pressure and humidity" if humidity is not None else "temperature and pressure"
+def _hub_air(study: Study, record: pd.DataFrame) -> HubAir:
+    """Air at the hub; a reference is read only if it has a thermometer or a barometer."""
+    station = reference_with_air(study.settings)
+    if station is None:
+        return hub_air(study.settings, record)
+    hours = reference_record(study, station.name).hourly(
+        study.settings.long_term.samples_per_hour_share
     )
-    return float(monthly.mean()), (
-        f"IEC 61400-12-1 from measured {told}, pressure carried to {hub:g} m; mean of "
-        f"{monthly.notna().sum()} calendar months"
+    return hub_air(study.settings, record, reference_air(hours, station), station)
+
+
+def _rated_speed(curve: PowerCurve) -> float:
+    return float(np.asarray(curve.wind_speed)[int(np.argmax(curve.power))])
+
+
+def _mast_mean(long_term: Outcome) -> float:
+    return float(long_term.tables["series"]["wind_speed"].mean())
+
+
+def _reach(settings: Settings, wind: HubWind) -> float:
+    """Logarithm of the height ratio from mast to hub; tiny instead of zero at one height."""
+    d = settings.profile.displacement_height_m
+    ratio = (settings.turbine.hub_height_m - d) / (wind.main_height - d)
+    return float(np.log(ratio)) or float(np.finfo(float).tiny)
+
+
+def _frequency_frame(table: FrequencyTable) -> pd.DataFrame:
+    """Shares of time by sector and speed bin, as the long-term step writes them."""
+    return pd.DataFrame(
+        np.vstack([table.share, table.undirected]),
+        index=[f"{centre:g}" for centre in table.sector_centres] + ["no direction"],
+        columns=[f"{edge:g}" for edge in table.speed_edges[:-1]],
     )
 
 
@@ -233,18 +287,15 @@ def _averaging_effect(
     curve: PowerCurve,
     measured: Outcome,
     settings: Settings,
+    wind: HubWind,
     air_density: float,
 ) -> float:
     """Energy of the record's own interval over that of its hourly means [1]."""
-    main = measured.tables["main"]["wind_speed"]
-    scaled = power_law(
-        main,
-        measured.number("measured.height_m"),
-        settings.turbine.hub_height_m,
-        measured.number("measured.shear_exponent"),
-    )
+    main = measured.tables["main"]
     assert isinstance(main.index, pd.DatetimeIndex)
-    fine = pd.Series(np.asarray(scaled), index=main.index)
+    interval = pd.Timedelta(minutes=settings.mast.interval_min)
+    factor = wind.factor_at(main.index, main["wind_direction"].to_numpy(dtype=float), interval)
+    fine = main["wind_speed"] * factor
     hours = fine.resample("1h")
     whole = hours.count() == round(60 / settings.mast.interval_min)
     hourly = hours.mean()[whole].to_numpy()
@@ -286,15 +337,8 @@ def _staircase(settings: Settings, gross: float) -> pd.DataFrame:
     return pd.DataFrame(steps, columns=["step", "energy_mwh_per_year"])
 
 
-def _warnings(settings: Settings, mast_height: float) -> list[str]:
+def _warnings(settings: Settings) -> list[str]:
     warnings = []
-    ratio = settings.turbine.hub_height_m / mast_height
-    if ratio > _HIGHEST_HUB_TO_MAST_RATIO:
-        warnings.append(
-            f"The hub is {ratio:.2f} times as high as the mast's main sensor; above "
-            f"{_HIGHEST_HUB_TO_MAST_RATIO:g} the mast is lower than two thirds of the hub, and the "
-            "profile between them is not measured."
-        )
     assumed = [loss for loss in settings.losses if loss.basis.startswith("assumed")]
     if assumed:
         warnings.append(

@@ -30,6 +30,7 @@ from windkit.study.reading import Reading, read_station
 from windkit.study.record import Record, build_record
 from windkit.study.stations import ChannelSettings
 from windkit.study.turbine import read_curve
+from windkit.study.unit_slips import refuse_unit_slips
 
 __all__ = ["Measured", "examine_record", "load_record", "read_references"]
 
@@ -112,8 +113,10 @@ def read_references(study: Study) -> list[Reading]:
 
 def load_record(study: Study) -> Record:
     """Read the mast's files, run the checks and apply the ledger."""
+    reading = read_station(study.settings.mast, study.folder)
+    refuse_unit_slips(reading)
     return build_record(
-        read_station(study.settings.mast, study.folder),
+        reading,
         study.settings.checks,
         read_ledger(study.ledger),
         references=read_references(study),

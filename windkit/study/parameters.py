@@ -65,8 +65,17 @@ PARAMETERS: dict[str, dict[str, Parameter]] = {
     "4_energy_yield": {
         "study_folder": _FOLDER,
         "hub_height_m": Parameter("turbine.hub_height_m", "hub height above ground [m]"),
+        "profile_method": Parameter(
+            "profile.method", "how speed is carried up: by_class, single, log_law or diabatic"
+        ),
     },
     "5_uncertainty": {"study_folder": _FOLDER},
+    "6_site_conditions": {
+        "study_folder": _FOLDER,
+        "exposure": Parameter("conditions.exposure", "surroundings, for gusts and short means"),
+        "maxima": Parameter("conditions.maxima", "auto, years or storms"),
+        "fit": Parameter("conditions.fit", "how extreme winds are fitted"),
+    },
 }
 
 _KERNEL_NAMES = {"In", "Out", "exit", "quit", "get_ipython", "open"}

@@ -57,6 +57,12 @@ _Levels: type[BaseModel] = create_model(
 )
 
 
+class _Conditions(_Part):
+    turbulence_class: str | None = None
+    v50_m_s: float | None = Field(default=None, gt=0)
+    verdict: dict[str, int]
+
+
 class Results(_Part):
     """What `results.json` holds at least."""
 
@@ -69,6 +75,7 @@ class Results(_Part):
     hub: _Hub
     energy: _Energy
     exceedance: dict[str, _Levels]  # type: ignore[valid-type]
+    conditions: _Conditions
     made_from: dict[str, dict[str, str]]
 
 

@@ -33,6 +33,7 @@ from windkit.study.parameters import (
 from windkit.study.reading import read_station
 from windkit.study.steps import STEPS, Step, step_named
 from windkit.study.turbine import read_curve
+from windkit.study.unit_slips import refuse_unit_slips
 
 __all__ = ["EXECUTED", "check_inputs", "executed_workbooks", "run_study"]
 
@@ -66,8 +67,10 @@ def check_inputs(study: Study) -> None:
             study.path(name, key=f"{place}.files")
     mast = read_station(settings.mast, study.folder)
     masked_by(mast.frame.iloc[:0], read_ledger(study.ledger))  # its channels, before its spans
+    refuse_unit_slips(mast)
     for station in settings.references:
         reading = read_station(station, study.folder)
+        refuse_unit_slips(reading)
         if settings.long_term.reference in (None, station.name):
             refuse_thin_overlap(
                 mast.frame[settings.mast.main_wind_speed],

@@ -1,7 +1,9 @@
 """Step 1, site screening: from a rough wind figure to a range of energy, before measuring.
 
-The answer is a range, since a first look can be wrong by half; what drives it is worked out one
-assumption at a time, so that the next euro goes where it narrows the answer most.
+Speed is carried to the hub by an exponent, or by the log law over the ground's roughness where
+`study.toml` names a roughness class or a kind of terrain; both are for screening only. The answer
+is a range, since a first look can be wrong by half; what drives it is worked out one assumption at
+a time, so that the next euro goes where it narrows the answer most.
 """
 
 from __future__ import annotations
@@ -15,11 +17,14 @@ from windkit.kernels.air import standard_atmosphere
 from windkit.kernels.curve import PowerCurve, betz_check, mean_power_weibull
 from windkit.kernels.energy import HOURS_PER_YEAR, annual_energy
 from windkit.kernels.exceedance import exceedance_level
-from windkit.kernels.profile import power_law
+from windkit.kernels.profile import log_law, power_law
+from windkit.kernels.roughness import WIND_ATLAS_CLASSES, change_roughness, coriolis_parameter
 from windkit.kernels.stream import BETZ_LIMIT, stream_power, swept_area, wind_power_density
 from windkit.kernels.weibull import weibull_energy_pattern_factor, weibull_mean
 from windkit.study.artifacts import Outcome, Row
+from windkit.study.errors import StudyError
 from windkit.study.folder import Study
+from windkit.study.settings import Settings
 from windkit.study.turbine import WATT_HOURS_PER_MWH, read_curve
 
 __all__ = ["Screening", "screen"]
@@ -29,6 +34,8 @@ __all__ = ["Screening", "screen"]
 _TRIED_SHAPE = 0.2
 _TRIED_EXPONENT = 0.05
 _TRIED_DENSITY = 0.03
+#: The same for a roughness length, as a factor: about half a class of the wind atlas.
+_TRIED_ROUGHNESS = 2.0
 
 
 @dataclass(frozen=True)
@@ -75,15 +82,16 @@ def screen(study: Study) -> Screening:
         speed: float = rough.mean_wind_speed_m_s,
         weibull_shape: float = shape,
         exponent: float = rough.shear_exponent,
+        roughness_factor: float = 1.0,
         air_density: float = density,
     ) -> float:
-        hub_speed = float(power_law(speed, rough.height_m, hub, exponent))
+        hub_speed, _ = _at_hub(study.settings, speed, exponent, roughness_factor)
         scale = hub_speed / float(weibull_mean(1.0, weibull_shape))
         watts = mean_power_weibull(curve, scale, weibull_shape, air_density=air_density)
         return float(annual_energy(watts)) / WATT_HOURS_PER_MWH
 
-    hub_speed = float(
-        power_law(rough.mean_wind_speed_m_s, rough.height_m, hub, rough.shear_exponent)
+    hub_speed, way_up = _at_hub(
+        study.settings, rough.mean_wind_speed_m_s, rough.shear_exponent, 1.0
     )
     scale = hub_speed / float(weibull_mean(1.0, shape))
     p50 = energy()
@@ -103,6 +111,12 @@ def screen(study: Study) -> Screening:
                 f"shear exponent ± {_TRIED_EXPONENT:g}",
                 energy(exponent=rough.shear_exponent - _TRIED_EXPONENT),
                 energy(exponent=rough.shear_exponent + _TRIED_EXPONENT),
+            )
+            if rough.roughness_length_m is None
+            else (
+                "roughness length halved or doubled",
+                energy(roughness_factor=1 / _TRIED_ROUGHNESS),
+                energy(roughness_factor=_TRIED_ROUGHNESS),
             ),
             (
                 f"Weibull shape ± {_TRIED_SHAPE:g}",
@@ -131,8 +145,7 @@ def screen(study: Study) -> Screening:
     rows = [
         Row(
             "screening.hub_mean_speed_m_s", "Mean wind speed at hub height", hub_speed, "m/s",
-            f"{rough.mean_wind_speed_m_s:g} m/s at {rough.height_m:g} m ({rough.basis}), carried "
-            f"up by the power law with exponent {rough.shear_exponent:.3f}",
+            f"{rough.mean_wind_speed_m_s:g} m/s at {rough.height_m:g} m ({rough.basis}), {way_up}",
         ),
         Row(
             "screening.air_density_kg_m3", "Air density at hub height", density, "kg/m3",
@@ -198,4 +211,42 @@ def screen(study: Study) -> Screening:
         drivers=drivers,
         power_table=table,
         outcome=Outcome("screen", rows, {"drivers": drivers, "power_curve": table}, said),
+    )
+
+
+def _at_hub(
+    settings: Settings, speed: float, exponent: float, roughness_factor: float
+) -> tuple[float, str]:
+    """Speed at hub height [m/s] and how it was carried there; for screening only."""
+    rough, hub = settings.screening, settings.turbine.hub_height_m
+    if rough.roughness_length_m is None:
+        carried = power_law(speed, rough.height_m, hub, exponent)
+        return float(carried), f"carried up by the power law with exponent {exponent:.3f}"
+    site = rough.roughness_length_m * roughness_factor
+    if rough.height_m <= site or hub <= site:
+        raise StudyError.of(
+            key="screening.height_m",
+            met=f"it is {rough.height_m:g} m over a roughness length of {site:g} m",
+            rule="the log law starts above the roughness length",
+            remedy="give the height of the rough figure in metres above ground",
+        )
+    if rough.figure_roughness_class is None:
+        carried = log_law(speed, rough.height_m, hub, site)
+        return float(carried), (
+            f"carried up by the log law over a roughness of {site:g} m, for screening only"
+        )
+    source = WIND_ATLAS_CLASSES[rough.figure_roughness_class]
+    try:
+        coriolis = coriolis_parameter(settings.site.latitude_deg)
+    except ValueError as error:
+        raise StudyError.of(
+            key="site.latitude_deg",
+            met=str(error),
+            rule="the drag law stands on the turning of the earth",
+            remedy="leave figure_roughness_class out, and say in basis what that leaves open",
+        ) from None
+    carried = change_roughness(speed, rough.height_m, source, hub, site, coriolis)
+    return float(carried), (
+        f"moved from a roughness of {source:g} m to one of {site:g} m by the geostrophic drag law "
+        "and carried up by the log law, for screening only"
     )

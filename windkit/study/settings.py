@@ -22,8 +22,10 @@ from pydantic import (
 )
 
 from windkit.kernels.losses import LOSS_GROUPS
+from windkit.kernels.roughness import TERRAIN_ROUGHNESS, WIND_ATLAS_CLASSES
 from windkit.study.checks.thresholds import CheckSettings
 from windkit.study.errors import StudyError
+from windkit.study.hub_settings import ConditionsSettings, ProfileSettings
 from windkit.study.settings_faults import explain_fault, fault_key, refuse_patterns, toml_remedy
 from windkit.study.station_draft import OPEN
 from windkit.study.stations import StationSettings
@@ -100,15 +102,60 @@ class ScreeningSettings(_Section):
     height_m: float = Field(gt=0, le=300)
     weibull_k: float = Field(default=2.0, ge=1.0, le=4.0)
     shear_exponent: float = Field(default=1 / 7, ge=-0.2, le=0.8)
+    # The ground instead of an exponent: a class of the wind atlas, or a kind of terrain.
+    roughness_class: float | None = None
+    terrain: str | None = None
+    # Class of the ground the rough figure belongs to, if another than the site's.
+    figure_roughness_class: float | None = None
     # Above one half the low end of a normal 80 % range is hardly any wind at all.
     standard_uncertainty: float = Field(gt=0, le=0.5)
     basis: str = Field(min_length=1)
+
+    @field_validator("roughness_class", "figure_roughness_class")
+    @classmethod
+    def _known_class(cls, value: float | None) -> float | None:
+        if value is not None and value not in WIND_ATLAS_CLASSES:
+            raise ValueError(f"it must be one of {', '.join(f'{c:g}' for c in WIND_ATLAS_CLASSES)}")
+        return value
+
+    @field_validator("terrain")
+    @classmethod
+    def _known_terrain(cls, value: str | None) -> str | None:
+        if value is not None and value not in TERRAIN_ROUGHNESS:
+            raise ValueError(f"it must be one of {', '.join(TERRAIN_ROUGHNESS)}")
+        return value
+
+    @model_validator(mode="after")
+    def _one_profile(self) -> ScreeningSettings:
+        given = {"shear_exponent", "roughness_class", "terrain"} & {
+            name for name in self.model_fields_set if getattr(self, name) is not None
+        }
+        if len(given) > 1:
+            raise ValueError(
+                f"[screening] {' and '.join(sorted(given))} stand side by side; keep one, since "
+                "each of them says how speed grows with height"
+            )
+        if self.figure_roughness_class is not None and self.roughness_length_m is None:
+            raise ValueError(
+                "[screening] figure_roughness_class moves the figure to the site's own ground; "
+                "write roughness_class or terrain of the site beside it"
+            )
+        return self
+
+    @property
+    def roughness_length_m(self) -> float | None:
+        """Of the site, where the ground is given instead of an exponent."""
+        if self.roughness_class is not None:
+            return WIND_ATLAS_CLASSES[self.roughness_class]
+        return TERRAIN_ROUGHNESS[self.terrain] if self.terrain is not None else None
 
 
 class ReferenceSettings(StationSettings):
     """A long record from near the site."""
 
     kind: Literal["station", "gridded"]
+    # Of its ground, or of the model's; with it temperature and pressure can be carried over.
+    elevation_m: float | None = Field(default=None, ge=-430, le=6000)
 
 
 class MeasuredSettings(_Section):
@@ -152,6 +199,14 @@ class TurbineSettings(_Section):
     rotor_diameter_m: float = Field(gt=0.5, le=350)
     rated_power_kw: float = Field(gt=0)
     cut_out_m_s: float = Field(default=25.0, gt=5, le=50)
+    # What the maker declares the design is good for; left out, it is not assessed.
+    design_class: Literal["I", "II", "III", "IV", "T"] | None = None
+    turbulence_class: Literal["A+", "A", "B", "C"] | None = None
+    design_mean_speed_m_s: float | None = Field(default=None, gt=0, le=20)
+    design_reference_speed_m_s: float | None = Field(default=None, gt=0, le=90)
+    design_turbulence: float | None = Field(default=None, gt=0, le=0.5)
+    lowest_temperature_c: float | None = Field(default=None, ge=-80, le=20)
+    highest_temperature_c: float | None = Field(default=None, ge=10, le=80)
 
 
 class TurbinePosition(_Section):
@@ -191,6 +246,8 @@ class UncertaintySettings(_Section):
     standard_uncertainty: float = Field(ge=0, lt=1)
     varies: Varies = "static"
     basis: str = Field(min_length=1)
+    # Why this figure stands although the study computes a larger one for the same cause.
+    reason_over_computed: str = ""
 
     @field_validator("group")
     @classmethod
@@ -198,6 +255,15 @@ class UncertaintySettings(_Section):
         if value not in UNCERTAINTY_GROUPS:
             raise ValueError(f"it must be one of {', '.join(UNCERTAINTY_GROUPS)}")
         return value
+
+    @model_validator(mode="after")
+    def _computed_beside_it(self) -> UncertaintySettings:
+        if self.reason_over_computed and self.group != "vertical_extrapolation":
+            raise ValueError(
+                "reason_over_computed is for group vertical_extrapolation, which the study "
+                "computes itself; take it out, or put it into basis"
+            )
+        return self
 
 
 class Settings(_Section):
@@ -212,10 +278,12 @@ class Settings(_Section):
     checks: CheckSettings = Field(default_factory=CheckSettings)
     measured: MeasuredSettings = MeasuredSettings()
     long_term: LongTermSettings
+    profile: ProfileSettings = Field(default_factory=ProfileSettings)
     turbine: TurbineSettings
     layout: list[TurbinePosition] = Field(min_length=1)
     losses: list[LossSettings] = Field(default_factory=list)
     uncertainties: list[UncertaintySettings] = Field(default_factory=list)
+    conditions: ConditionsSettings = Field(default_factory=ConditionsSettings)
 
     @model_validator(mode="after")
     def _hangs_together(self) -> Settings:

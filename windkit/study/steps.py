@@ -1,4 +1,4 @@
-"""The five steps of a study, in order: their workbooks and what each stands on.
+"""The six steps of a study, in order: their workbooks and what each stands on.
 
 A table and its look-ups, nothing else. The order here is the order of the workbooks, of the
 table of contents and of the report.
@@ -67,7 +67,7 @@ STEPS: tuple[Step, ...] = (
         "yield",
         "4_energy_yield",
         "Energy yield",
-        ("site", "turbine", "layout", "losses"),
+        ("site", "profile", "turbine", "layout", "losses"),
         ("measure", "long_term"),
     ),
     Step(
@@ -76,6 +76,13 @@ STEPS: tuple[Step, ...] = (
         "Uncertainty",
         ("losses", "uncertainties"),
         ("long_term", "yield"),
+    ),
+    Step(
+        "conditions",
+        "6_site_conditions",
+        "Site conditions",
+        ("site", "turbine", "layout", "conditions"),
+        ("measure", "long_term", "yield"),
     ),
 )
 

@@ -20,7 +20,7 @@ from windkit.kernels.exceedance import (
 )
 from windkit.study.artifacts import Outcome, Row, load_artifact
 from windkit.study.folder import Study
-from windkit.study.settings import UNCERTAINTY_GROUPS
+from windkit.study.settings import UNCERTAINTY_GROUPS, UncertaintySettings
 
 __all__ = ["PROBABILITIES", "YEARS", "Uncertainty", "assess_uncertainty"]
 
@@ -81,7 +81,7 @@ def assess_uncertainty(study: Study) -> Uncertainty:
     long_term, energy = load_artifact(study, "long_term"), load_artifact(study, "yield")
     p50 = energy.number("energy.net_p50_mwh_per_year")
     sensitivity = energy.number("energy.sensitivity")
-    parts = _parts(study, long_term, sensitivity)
+    parts = _parts(study, long_term, energy, sensitivity)
     static, yearly = _spread(parts, "static"), _spread(parts, "yearly")
     table = exceedance_table(p50, static, yearly, years=YEARS, probabilities=PROBABILITIES)
     names = [f"P{round(100 * probability)}" for probability in PROBABILITIES]
@@ -109,6 +109,7 @@ def assess_uncertainty(study: Study) -> Uncertainty:
             "of energy in any one year; quadrature of the yearly causes", as_percent=True,
         ),
     ]  # fmt: skip
+    rows += _hub_interval(energy, parts)
     rows += [
         Row(
             f"uncertainty.total_{years}_year{'s' if years > 1 else ''}",
@@ -154,7 +155,7 @@ def assess_uncertainty(study: Study) -> Uncertainty:
     )
 
 
-def _parts(study: Study, long_term: Outcome, sensitivity: float) -> pd.DataFrame:
+def _parts(study: Study, long_term: Outcome, energy: Outcome, sensitivity: float) -> pd.DataFrame:
     """Every cause as a row, wind and energy side by side."""
     causes = [
         (
@@ -171,10 +172,22 @@ def _parts(study: Study, long_term: Outcome, sensitivity: float) -> pd.DataFrame
                 long_term.number("long_term.yearly_variability"), "computed in step 3",
             )
         )  # fmt: skip
+    computed = energy.number("hub.extrapolation_standard_uncertainty")
+    by_hand = [cause for cause in stated if cause.group == "vertical_extrapolation"]
+    kept, basis = _way_up(by_hand, computed, sensitivity)
+    if not kept:
+        causes.append(
+            ("vertical_extrapolation", "from the mast to the hub", "wind_speed", "static",
+             computed, basis)
+        )  # fmt: skip
     causes += [
-        (cause.group, cause.name, cause.of, cause.varies, cause.standard_uncertainty, cause.basis)
+        (
+            cause.group, cause.name, cause.of, cause.varies, cause.standard_uncertainty,
+            f"{cause.basis}; {basis}" if cause in by_hand else cause.basis,
+        )
         for cause in stated
-    ]
+        if cause not in by_hand or kept
+    ]  # fmt: skip
     parts = pd.DataFrame(
         causes, columns=["group", "name", "of", "varies", "standard_uncertainty", "basis"]
     )
@@ -187,6 +200,57 @@ def _parts(study: Study, long_term: Outcome, sensitivity: float) -> pd.DataFrame
     total = variance.sum()
     parts.insert(6, "share_of_ten_year_variance", variance / total if total > 0 else variance)
     return parts
+
+
+def _way_up(
+    stated: list[UncertaintySettings], computed: float, sensitivity: float
+) -> tuple[bool, str]:
+    """Whether the stated rows of the way up stand, or the computed one does; never both."""
+    if not stated:
+        return False, "computed in step 4"
+    together = float(
+        combine_in_quadrature(
+            np.array(
+                [
+                    cause.standard_uncertainty
+                    / (1.0 if cause.of == "wind_speed" or sensitivity == 0 else sensitivity)
+                    for cause in stated
+                ]
+            )
+        )
+    )
+    told = f"step 4 computes {computed:.2%} of wind speed, stated are {together:.2%}"
+    reason = "; ".join(c.reason_over_computed for c in stated if c.reason_over_computed)
+    if together >= computed:
+        return True, f"{told}, the larger is used"
+    if reason:
+        return True, f"{told}, used all the same: {reason}"
+    return False, f"{told}, the larger is used"
+
+
+def _hub_interval(energy: Outcome, parts: pd.DataFrame) -> list[Row]:
+    """How sure the long-term mean at the hub is: all static causes of wind above the mast."""
+    of_mast = (
+        (parts["of"] == "wind_speed")
+        & (parts["varies"] == "static")
+        & (parts["group"] != "horizontal_extrapolation")
+    )
+    own = float(
+        combine_in_quadrature(parts.loc[of_mast, "standard_uncertainty"].to_numpy(dtype=float))
+    )
+    mean = energy.number("hub.mean_speed_m_s")
+    return [
+        Row(
+            "hub.standard_uncertainty", "Standard uncertainty of the mean speed at the hub", own,
+            "1", "quadrature of measurement, long-term correction and the way up",
+            as_percent=True,
+        ),
+        Row(
+            "hub.interval_80_m_s", "80 % interval of the mean speed at the hub",
+            [float(exceedance_level(mean, own, p)) for p in (0.9, 0.1)], "m/s",
+            "normal, from the same causes; at the mast, without the turbines' own places",
+        ),
+    ]  # fmt: skip
 
 
 def _period_for_climate(long_term: Outcome) -> list[tuple[str, str, str, str, float, str]]:

@@ -1,0 +1,286 @@
+"""Step 6, site conditions: what the machine will have to bear, against what it is designed for.
+
+Turbulence and temperature come from the mast, extreme winds from the long-term series at the hub,
+air from the yield step. The verdict is words in a table, see `verdict`. Loads are not computed,
+and nothing here is a design assessment.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+
+from windkit.study.artifacts import Outcome, Row, load_artifact
+from windkit.study.extreme_winds import ExtremeWinds, extreme_winds, no_extremes
+from windkit.study.folder import Study
+from windkit.study.site_air import SiteAir, site_air
+from windkit.study.site_turbulence import (
+    LEAST_IN_BIN,
+    NO_TURBULENCE,
+    STRONG_WIND,
+    SiteTurbulence,
+    site_turbulence,
+)
+from windkit.study.verdict import (
+    CAUTION,
+    EVERY_CLASS,
+    FIFTY_YEAR_WIND,
+    INSIDE,
+    MACHINE,
+    NOT_ASSESSED,
+    OPEN,
+    OUTSIDE,
+    SiteFigures,
+    verdict_table,
+)
+
+__all__ = ["Conditions", "assess_conditions"]
+
+
+@dataclass(frozen=True)
+class Conditions:
+    """What the last step found.
+
+    Attributes
+    ----------
+    turbulence : SiteTurbulence
+        With empty tables where it is not assessed.
+    extremes : ExtremeWinds
+        The same.
+    air : SiteAir
+        Temperature and icing.
+    air_monthly : DataFrame
+        From the yield step.
+    verdict : DataFrame
+        Every comparison, see `verdict.verdict_table`.
+    outcome : Outcome
+    """
+
+    turbulence: SiteTurbulence
+    extremes: ExtremeWinds
+    air: SiteAir
+    air_monthly: pd.DataFrame
+    verdict: pd.DataFrame
+    outcome: Outcome
+
+    @property
+    def speed_limits(self) -> dict[str, float]:
+        """Fifty-year winds the classes and the machine are designed for [m/s], by name."""
+        rows = self.verdict[self.verdict["condition"] == FIFTY_YEAR_WIND].dropna(subset="limit")
+        return dict(zip(rows["against"], rows["limit"].astype(float), strict=True))
+
+
+def assess_conditions(study: Study) -> Conditions:
+    """Hold the site against the design classes and the machine's declared limits.
+
+    Returns
+    -------
+    Conditions
+    """
+    settings = study.settings
+    measured, energy = load_artifact(study, "measure"), load_artifact(study, "yield")
+    record = measured.tables["record"]
+    hub_series = energy.tables["hub_series"]
+    rated_speed = energy.number("hub.rated_speed_m_s")
+    why_not: dict[str, str] = {}
+    found = site_turbulence(
+        settings, record, str(measured.value("measured.channel")), rated_speed=rated_speed
+    )
+    turbulence = None if isinstance(found, str) else found
+    if isinstance(found, str):
+        why_not["turbulence"] = why_not["wakes"] = found
+    elif not found.by_speed["effective"].notna().any():
+        why_not["wakes"] = "no neighbour within ten rotor diameters"
+    drawn = extreme_winds(
+        hub_series["wind_speed"],
+        settings.conditions,
+        weibull_shape=energy.number("hub.weibull_k"),
+        turbulence=turbulence.strong if turbulence else None,
+    )
+    extremes = None if isinstance(drawn, str) else drawn
+    if isinstance(drawn, str):
+        why_not["extremes"] = drawn
+    air = site_air(
+        settings,
+        record,
+        energy.tables["air_temperature"]["temperature"],
+        hub_height=energy.number("hub.height_m"),
+    )
+    if air.lowest_c is None:
+        why_not["temperature"] = "no temperature at the mast or from the reference"
+    factor = max(place.speed_factor for place in settings.layout)
+    figures = _figures(energy, turbulence, extremes, air, factor, why_not)
+    table = verdict_table(figures, settings.turbine)
+    rows = _rows(turbulence, extremes, air, table, factor)
+    tables = {
+        "verdict": table,
+        "temperature": air.table,
+        "temperature_frequency": air.frequency,
+    }
+    if turbulence is not None:
+        tables |= {
+            "turbulence_by_speed": turbulence.by_speed,
+            "turbulence_by_sector": turbulence.by_sector,
+        }
+    if extremes is not None:
+        tables |= {
+            "extreme_maxima": extremes.maxima,
+            "extreme_fits": extremes.fits,
+            "extreme_levels": extremes.levels,
+        }
+    warnings = list(extremes.warnings) if extremes else list(filter(None, [why_not["extremes"]]))
+    return Conditions(
+        turbulence=turbulence or NO_TURBULENCE,
+        extremes=extremes or no_extremes(),
+        air=air,
+        air_monthly=energy.tables["air_monthly"],
+        verdict=table,
+        outcome=Outcome(
+            "conditions", rows, tables, _said(turbulence, extremes, air, table, why_not), warnings
+        ),
+    )
+
+
+def _figures(
+    energy: Outcome,
+    turbulence: SiteTurbulence | None,
+    extremes: ExtremeWinds | None,
+    air: SiteAir,
+    factor: float,
+    why_not: dict[str, str],
+) -> SiteFigures:
+    judged = None
+    if turbulence is not None:
+        inside = turbulence.by_speed["wind_speed_m_s"].between(*turbulence.judged)
+        judged = turbulence.by_speed[inside]
+        if judged.empty:
+            judged = None
+            why_not["turbulence"] = "no speed bin with enough intervals in the range judged"
+    return SiteFigures(
+        mean_speed=factor * energy.number("hub.mean_speed_m_s"),
+        v50=factor * extremes.v50 if extremes else None,
+        v50_standard_error=factor * extremes.v50_standard_error if extremes else None,
+        v1=factor * extremes.v1 if extremes else None,
+        gust_50=factor * extremes.gust_50 if extremes else None,
+        speed=judged["wind_speed_m_s"].to_numpy() if judged is not None else None,
+        ambient=judged["representative"].to_numpy() if judged is not None else None,
+        effective=judged["effective"].to_numpy() if judged is not None else None,
+        shear_exponent=energy.number("hub.shear_exponent"),
+        air_density=energy.number("hub.air_density_kg_m3"),
+        lowest_temperature_c=air.lowest_c,
+        highest_temperature_c=air.highest_c,
+        why_not=why_not,
+    )
+
+
+def _rows(
+    turbulence: SiteTurbulence | None,
+    extremes: ExtremeWinds | None,
+    air: SiteAir,
+    table: pd.DataFrame,
+    factor: float,
+) -> list[Row]:
+    rows: list[Row] = []
+    if extremes is not None:
+        rows += [
+            Row("conditions.v50_m_s", "Ten-minute wind of 50 years at the hub", extremes.v50,
+                "m/s", extremes.basis),
+            Row("conditions.v50_standard_error_m_s", "its standard error",
+                extremes.v50_standard_error, "m/s", "scatter of the maxima only"),
+            Row("conditions.v1_m_s", "Ten-minute wind of one year at the hub", extremes.v1, "m/s",
+                "same fit, the level passed once a year on average"),
+            Row("conditions.gust_50_m_s", "3 s gust of 50 years at the hub", extremes.gust_50,
+                "m/s", extremes.gust_basis),
+            Row("conditions.v50_from_weibull_m_s", "50-year wind from the Weibull tail",
+                extremes.from_weibull, "m/s", "Bergström 1992, a check and no design value"),
+            Row("conditions.highest_speed_factor", "Speed factor of the windiest turbine", factor,
+                "1", "study.toml; the verdict multiplies winds with it"),
+        ]  # fmt: skip
+    if turbulence is not None:
+        near_15 = turbulence.by_speed[turbulence.by_speed["wind_speed_m_s"] == 15.0]
+        if len(near_15):
+            rows.append(
+                Row("conditions.turbulence_15", "90 % turbulence intensity at 15 m/s",
+                    float(near_15["representative"].iloc[0]), "1",
+                    f"mean plus 1.28 spreads of {int(near_15['count'].iloc[0])} intervals, at the "
+                    "mast, no trend removed", as_percent=True)
+            )  # fmt: skip
+        rows.append(
+            Row("conditions.turbulence_class", "Mildest class above the ambient turbulence",
+                turbulence.mildest or "none", "",
+                f"IEC 61400-1, bins from {turbulence.judged[0]:.1f} to {turbulence.judged[1]:.0f} "
+                f"m/s with {LEAST_IN_BIN} intervals or more")
+        )  # fmt: skip
+    rows += air.rows
+    machine = _about_the_machine(table)
+    for word, key in ((INSIDE, "inside"), (OUTSIDE, "outside"), (NOT_ASSESSED, "not_assessed")):
+        rows.append(
+            Row(f"conditions.verdict.{key}", f"Conditions {word}, against the machine's own limits",
+                int((machine["verdict"] == word).sum()), "1",
+                "verdict table; a certified design assessment decides")
+        )  # fmt: skip
+    return rows
+
+
+def _said(
+    turbulence: SiteTurbulence | None,
+    extremes: ExtremeWinds | None,
+    air: SiteAir,
+    table: pd.DataFrame,
+    why_not: dict[str, str],
+) -> dict[str, str]:
+    said = {
+        "turbulence": _sentence(why_not.get("turbulence", "")),
+        "extremes": _sentence(why_not.get("extremes", "")),
+        "air": air.said,
+    }
+    if turbulence is not None:
+        name, distance = turbulence.nearest_neighbour
+        said["turbulence"] = (
+            f"From {turbulence.judged[0]:.1f} to {turbulence.judged[1]:.0f} m/s the 90 % values "
+            + (
+                f"stay below the line of class {turbulence.mildest}."
+                if turbulence.mildest
+                else "pass the line of the highest class."
+            )
+            + f" In the wind of {STRONG_WIND:g} m/s and more the mean intensity is "
+            + (f"{turbulence.strong:.1%}." if turbulence.strong else "not known.")
+            + (
+                f" {name} has its nearest neighbour at {distance:.1f} rotor diameters, and its "
+                "wakes are in the effective line."
+                if np.isfinite(distance)
+                else ""
+            )
+        )
+    if extremes is not None:
+        fits = extremes.fits["fifty_year_m_s"]
+        said["extremes"] = (
+            f"The ten-minute wind of 50 years is {extremes.v50:.1f} m/s with a standard error of "
+            f"{extremes.v50_standard_error:.1f}; the fits lie between {fits.min():.1f} and "
+            f"{fits.max():.1f}, and the Weibull tail says {extremes.from_weibull:.1f}. The 3 s "
+            f"gust is {extremes.gust_50:.1f} m/s."
+        )
+    machine = _about_the_machine(table)
+    outside = machine.loc[machine["verdict"] == OUTSIDE, "condition"].tolist()
+    open_ones = machine.loc[machine["verdict"] == NOT_ASSESSED, "condition"].tolist()
+    without = int((table["group"] == OPEN).sum())
+    said["verdict"] = (
+        f"Of {len(machine)} conditions held against the machine's own limits, "
+        f"{int((machine['verdict'] == INSIDE).sum())} are inside"
+        + (f"; outside: {', '.join(outside)}" if outside else ", none is outside")
+        + (f"; not assessed: {', '.join(open_ones)}" if open_ones else "")
+        + f". {without} more have no data in this study. {CAUTION}"
+    )
+    return said
+
+
+def _about_the_machine(table: pd.DataFrame) -> pd.DataFrame:
+    """Rows that speak of the machine: its own limits, and those that all classes share."""
+    return table[table["against"].isin([MACHINE, EVERY_CLASS]) & (table["group"] != OPEN)]
+
+
+def _sentence(text: str) -> str:
+    text = text.strip().rstrip(".")
+    return text[:1].upper() + text[1:] + "." if text else ""

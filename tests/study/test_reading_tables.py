@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
+import sys
 from pathlib import Path
 
 import numpy as np
@@ -138,14 +139,20 @@ def test_what_the_file_says_must_be_what_is_declared(tmp_path: Path):
         read_station(grid(), tmp_path)
 
 
-def test_netcdf_4_is_read_or_its_package_named(tmp_path: Path):
-    try:
-        import h5netcdf
-    except ImportError:
-        (tmp_path / "grid.nc").write_bytes(b"\x89HDF\r\n\x1a\n")
-        with pytest.raises(StudyError, match="the package h5netcdf is not installed"):
-            read_station(grid(), tmp_path)
-        return
+def test_netcdf_4_names_its_package_where_that_is_not_installed(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+):
+    monkeypatch.setitem(sys.modules, "h5netcdf", None)  # an import of it fails
+    (tmp_path / "grid.nc").write_bytes(b"\x89HDF\r\n\x1a\n")
+    with pytest.raises(StudyError, match="the package h5netcdf is not installed"):
+        read_station(grid(), tmp_path)
+
+
+def test_netcdf_4_is_read_and_a_damaged_one_refused(tmp_path: Path):
+    h5netcdf = pytest.importorskip("h5netcdf")
+    (tmp_path / "grid.nc").write_bytes(b"\x89HDF\r\n\x1a\n")
+    with pytest.raises(StudyError, match="the file cannot be read as NetCDF"):
+        read_station(grid(), tmp_path)
     with h5netcdf.File(tmp_path / "grid.nc", "w") as file:
         file.dimensions = {"time": 3}
         time = file.create_variable("valid_time", ("time",), data=np.array([0, 3600, 7200]))

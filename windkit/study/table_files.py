@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import datetime as dt
 import hashlib
-import importlib
 import re
 from collections.abc import Callable, Sequence
 from pathlib import Path
@@ -328,7 +327,9 @@ def _open_netcdf(path: Path, written: str) -> tuple[dict[str, Any], Callable[[],
             old = netcdf_file(path, "r", mmap=False)
             return dict(old.variables), old.close
         if magic == b"\x89HDF":
-            new = importlib.import_module("h5netcdf").File(path, "r")  # optional package
+            import h5netcdf  # optional package
+
+            new = h5netcdf.File(path, "r")
             return dict(new.variables), new.close
     except ImportError as error:
         raise StudyError.of(

@@ -9,6 +9,9 @@ from pathlib import Path
 
 import pandas as pd
 import pytest
+from hypothesis import HealthCheck, given
+from hypothesis import settings as hypothesis_settings
+from hypothesis import strategies as st
 
 from windkit.study.drafting import draft_from_file, draft_station
 from windkit.study.errors import StudyError
@@ -278,3 +281,33 @@ def test_one_of_several_stations_has_to_be_named(tmp_path: Path):
     assert draft_from_description(path, station="SKM-M2").station["name"] == "SKM-M2"
     with pytest.raises(StudyError, match="Name one of: 'SKM-M1', 'SKM-M2'"):
         draft_from_description(path, station="nowhere")
+
+
+FIELD = st.one_of(
+    st.sampled_from(["1.5", "2,5", "-999", "", "NAN", "x", '"', "speed 80 [m/s]", "dir"]),
+    st.text(max_size=5),
+)
+STAMPS = st.sampled_from(["2026-01-01 00:00", "2026-01-01 00:10", "01.02.2026 00:00", "time", ""])
+LINES = st.lists(st.tuples(STAMPS, st.lists(FIELD, max_size=4)), max_size=8)
+
+
+def a_draft_is_toml_or_refused(folder: Path, lines: list[tuple[str, list[str]]], sign: str) -> None:
+    """Whatever the file holds, its draft can be read as TOML and leaves a question open."""
+    text = "\n".join(sign.join([stamp, *fields]) for stamp, fields in lines)
+    (folder / "mast.csv").write_bytes(text.encode("utf-8", "surrogatepass"))
+    try:
+        draft = draft_from_file(folder / "mast.csv")
+    except StudyError:
+        return
+    section = tomllib.loads(draft_text(draft))["mast"]
+    assert section["utc_offset_h"] == OPEN
+    with pytest.raises(ValueError):
+        StationSettings.model_validate(section)
+
+
+@hypothesis_settings(
+    max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
+)
+@given(lines=LINES, sign=st.sampled_from(",;\t"))
+def test_any_file_gives_a_draft_in_toml_or_is_refused(tmp_path: Path, lines, sign: str):
+    a_draft_is_toml_or_refused(tmp_path, lines, sign)

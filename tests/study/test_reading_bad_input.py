@@ -6,6 +6,7 @@ import contextlib
 import datetime as dt
 import gzip
 from pathlib import Path
+from typing import Any
 
 import openpyxl
 import pandas as pd
@@ -286,22 +287,20 @@ ROW = st.one_of(
 )
 
 
-@hypothesis_settings(
-    max_examples=400, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
-)
-@given(
-    rows=st.lists(ROW, max_size=12),
-    ordered=st.booleans(),
-    forgiving=st.booleans(),
-    end=st.sampled_from(["\n", "\r\n", ""]),
-)
-def test_rows_in_are_rows_kept_and_rows_set_aside_for_any_file(
-    tmp_path: Path, rows: list[str], ordered: bool, forgiving: bool, end: str
-):
+#: Arguments of `rows_add_up` for any file; a longer run is in tests/fuzz.
+ANY_ROWS = {
+    "rows": st.lists(ROW, max_size=12),
+    "ordered": st.booleans(),
+    "forgiving": st.booleans(),
+    "end": st.sampled_from(["\n", "\r\n", ""]),
+}
+
+
+def rows_add_up(folder: Path, rows: list[str], ordered: bool, forgiving: bool, end: str) -> None:
     """Whatever the file holds, it is refused with a message or every row is accounted for."""
     rows = sorted(rows) if ordered else rows
     content = (end or "\n").join([HEADER, *rows]) + end
-    (tmp_path / "mast.csv").write_bytes(content.encode("utf-8", "surrogatepass"))
+    (folder / "mast.csv").write_bytes(content.encode("utf-8", "surrogatepass"))
     more = {}
     if forgiving:
         more = {
@@ -311,7 +310,7 @@ def test_rows_in_are_rows_kept_and_rows_set_aside_for_any_file(
             "missing": ["NAN", "-999", "nan", "inf", "x"],
         }
     try:
-        reading = read_station(settings(**more), tmp_path)
+        reading = read_station(settings(**more), folder)
     except StudyError:
         return
     assert reading.rows_read == reading.rows_kept + len(reading.set_aside)
@@ -321,11 +320,24 @@ def test_rows_in_are_rows_kept_and_rows_set_aside_for_any_file(
     assert reading.rows_kept <= reading.expected_count
 
 
+def bytes_are_read_or_refused(folder: Path, content: bytes) -> None:
+    """Whatever stands under the header, there is a record or a message."""
+    (folder / "mast.csv").write_bytes(HEADER.encode() + b"\n" + content)
+    with contextlib.suppress(StudyError):
+        read_station(settings(), folder)
+
+
+@hypothesis_settings(
+    max_examples=400, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
+)
+@given(**ANY_ROWS)
+def test_rows_in_are_rows_kept_and_rows_set_aside_for_any_file(tmp_path: Path, **given_rows: Any):
+    rows_add_up(tmp_path, **given_rows)
+
+
 @hypothesis_settings(
     max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
 )
 @given(content=st.binary(max_size=200))
 def test_any_bytes_at_all_are_refused_with_a_message_or_read(tmp_path: Path, content: bytes):
-    (tmp_path / "mast.csv").write_bytes(HEADER.encode() + b"\n" + content)
-    with contextlib.suppress(StudyError):
-        read_station(settings(), tmp_path)
+    bytes_are_read_or_refused(tmp_path, content)

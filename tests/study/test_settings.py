@@ -2,10 +2,14 @@
 
 from __future__ import annotations
 
+import contextlib
 import tomllib
 from pathlib import Path
 
 import pytest
+from hypothesis import HealthCheck, given
+from hypothesis import settings as hypothesis_settings
+from hypothesis import strategies as st
 
 from tests.small_study import SETTINGS
 from windkit.study.errors import StudyError
@@ -185,8 +189,9 @@ def test_a_pattern_of_files_is_refused_with_the_files_that_match(tmp_path):
     assert len(read_settings(file)["mast"]["files"]) == 4
 
 
-def test_toml_that_nests_too_deep_is_refused(tmp_path):
-    (tmp_path / "study.toml").write_text("a = " + "[" * 5000 + "]" * 5000)
+@pytest.mark.parametrize("value", ["[" * 5000 + "]" * 5000, "9" * 5000])
+def test_toml_that_the_parser_gives_up_on_is_refused(tmp_path, value):
+    (tmp_path / "study.toml").write_text(f"a = {value}")
     with pytest.raises(StudyError, match=r"study\.toml: "):
         read_settings(tmp_path / "study.toml")
 
@@ -223,3 +228,48 @@ def test_overrides_lie_over_the_values_and_leave_the_file_alone():
 def test_an_override_over_something_that_is_no_table_is_refused_like_any_fault():
     with pytest.raises(StudyError, match=r"turbine: is 3; it must be a valid dictionary"):
         parse_settings(with_overrides({"turbine": 3}, {"turbine.hub_height_m": 120.0}))
+
+
+#: Values that are odd in one way or another, as they are written.
+ODD = """
+nan | -inf | 1e400 | -1 | true | [] | {} | 9,4 | "?" | [1, [2]] | 0x10 | "" | 2024-02-30
+2024-01-01 | "FILL IN" | "*" | ["\\u0000"] | ["**/[a"] | { a.b = 1 } | 12:00:00 | [[[[{}]]]]
+"""
+VALUE = st.one_of(
+    st.sampled_from(
+        [each.strip() for line in ODD.strip().splitlines() for each in line.split("|")]
+    ),
+    st.sampled_from(["9" * 400, "9" * 5000, f'["{"a" * 300}*"]']),
+    st.floats().map(repr),
+    st.text(max_size=6),
+)
+EDIT = st.tuples(
+    st.integers(0, len(SETTINGS.splitlines()) - 1), st.sampled_from("vdri"), VALUE
+)  # which line; value changed, line dropped, repeated, or one put in
+EDITS = st.lists(EDIT, max_size=6)
+
+
+def settings_are_read_or_refused(folder: Path, edits: list[tuple[int, str, str]]) -> None:
+    """However study.toml is edited, there are settings or a message."""
+    lines = SETTINGS.splitlines()
+    for at, how, value in edits:
+        if how == "v" and " = " in lines[at]:
+            lines[at] = lines[at].split(" = ")[0] + " = " + value
+        elif how == "d":
+            lines[at] = ""
+        elif how == "r":
+            lines[at] += "\n" + lines[at]
+        elif how == "i":
+            lines[at] += "\n" + value
+    file = folder / "study.toml"
+    file.write_bytes("\n".join(lines).encode("utf-8", "surrogatepass"))
+    with contextlib.suppress(StudyError):
+        parse_settings(read_settings(file))
+
+
+@hypothesis_settings(
+    max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
+)
+@given(edits=EDITS)
+def test_any_edit_of_the_settings_is_refused_with_a_message_or_read(tmp_path: Path, edits):
+    settings_are_read_or_refused(tmp_path, edits)

@@ -22,7 +22,7 @@ from pydantic import (
 )
 
 from windkit.kernels.losses import LOSS_GROUPS
-from windkit.kernels.roughness import TERRAIN_ROUGHNESS, WIND_ATLAS_CLASSES
+from windkit.kernels.roughness import ROUGHNESS_CLASSES, TERRAIN_ROUGHNESS
 from windkit.study.checks.thresholds import CheckSettings
 from windkit.study.errors import StudyError
 from windkit.study.hub_settings import ConditionsSettings, ProfileSettings
@@ -114,8 +114,8 @@ class ScreeningSettings(_Section):
     @field_validator("roughness_class", "figure_roughness_class")
     @classmethod
     def _known_class(cls, value: float | None) -> float | None:
-        if value is not None and value not in WIND_ATLAS_CLASSES:
-            raise ValueError(f"it must be one of {', '.join(f'{c:g}' for c in WIND_ATLAS_CLASSES)}")
+        if value is not None and value not in ROUGHNESS_CLASSES:
+            raise ValueError(f"it must be one of {', '.join(f'{c:g}' for c in ROUGHNESS_CLASSES)}")
         return value
 
     @field_validator("terrain")
@@ -146,7 +146,7 @@ class ScreeningSettings(_Section):
     def roughness_length_m(self) -> float | None:
         """Of the site, where the ground is given instead of an exponent."""
         if self.roughness_class is not None:
-            return WIND_ATLAS_CLASSES[self.roughness_class]
+            return ROUGHNESS_CLASSES[self.roughness_class]
         return TERRAIN_ROUGHNESS[self.terrain] if self.terrain is not None else None
 
 

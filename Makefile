@@ -30,9 +30,10 @@ study: $(VENV)/installed ## make a private environment and run the demo study
 	@test -d $(STUDY) || $(BIN)/sitestudy new $(STUDY) --demo
 	@$(BIN)/sitestudy run $(STUDY)
 
-test: $(VENV)/installed-test lint ## install what tests need, run them all, workbooks included
+test: $(VENV)/installed-test ## install what tests need, run them all, workbooks included
 	$(BIN)/python -m pytest -q -p no:nbval -n 2 tests
 	$(BIN)/python -m pytest -q --nbval-lax --nbval-cell-timeout=300 workbooks
+	@$(MAKE) --no-print-directory lint
 
 lint: $(VENV)/installed-test ## style and types
 	$(BIN)/ruff check .

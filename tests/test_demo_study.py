@@ -101,7 +101,9 @@ def test_conditions_and_the_verdict_are_in_results_and_report(study: Path, resul
     assert 15 < conditions["v1_m_s"] < conditions["v50_m_s"] < conditions["gust_50_m_s"] < 70
     assert conditions["v50_standard_error_m_s"] < 0.15 * conditions["v50_m_s"]
     # The generator draws an intensity of 0.135 - 0.25 (shear - 0.18) at 80 m, before scatter.
-    by_speed = pd.read_parquet(study / "results" / "conditions" / "turbulence_by_speed.parquet")
+    by_speed = pd.read_parquet(
+        study / "results" / "conditions" / "turbulence_in_speed_bins.parquet"
+    )
     at_ten = by_speed.set_index("wind_speed_m_s")["mean"][10.0]
     assert at_ten == pytest.approx(0.145, abs=0.02)
     assert conditions["lowest_temperature_c"] < 0 < conditions["highest_temperature_c"]

@@ -62,7 +62,7 @@ DRAWINGS = {
     ),
     "recovery_map": lambda ax: figures.recovery_map(RECOVERY, ax=ax),
     "profile": lambda ax: figures.profile([40, 80], [6.4, 7.2], 0.17, 100, ax=ax),
-    "turbulence_by_speed": lambda ax: figures.turbulence_by_speed(
+    "turbulence_in_speed_bins": lambda ax: figures.turbulence_in_speed_bins(
         [4, 5], [0.1, 0.1], [0.2, 0.2], ax=ax
     ),
     "pair_ratio_by_direction": lambda ax: figures.pair_ratio_by_direction(
@@ -236,7 +236,7 @@ def test_house_settings_can_be_taken_for_a_session():
 
 def test_a_figure_without_data_says_why_it_is_empty() -> None:
     ratio = figures.pair_ratio_by_direction([], [])
-    turbulence = figures.turbulence_by_speed([], [], [])
+    turbulence = figures.turbulence_in_speed_bins([], [], [])
     assert ratio.texts[0].get_text() == "one sensor only at this height"
     assert "no standard deviation" in turbulence.texts[0].get_text()
 

@@ -6,8 +6,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from windkit.kernels.roughness import (
+    ROUGHNESS_CLASSES,
     TERRAIN_ROUGHNESS,
-    WIND_ATLAS_CLASSES,
     change_roughness,
     coriolis_parameter,
     geostrophic_friction_velocity,
@@ -27,8 +27,8 @@ def test_atlas_classes_as_printed():
     # wind-energy reader and Jain 2011, table 3-5.
     whole = {0.0: 0.0002, 1.0: 0.03, 2.0: 0.10, 3.0: 0.40}
     half = {0.5: 0.0024, 1.5: 0.055, 2.5: 0.2, 3.5: 0.8, 4.0: 1.6}
-    assert dict(WIND_ATLAS_CLASSES) == whole | half
-    lengths = [WIND_ATLAS_CLASSES[key] for key in sorted(WIND_ATLAS_CLASSES)]
+    assert dict(ROUGHNESS_CLASSES) == whole | half
+    lengths = [ROUGHNESS_CLASSES[key] for key in sorted(ROUGHNESS_CLASSES)]
     assert lengths == sorted(lengths)
 
 

@@ -10,8 +10,8 @@ from windkit.kernels.turbulence import (
     REPRESENTATIVE_FACTOR,
     effective_turbulence,
     gust_factor,
-    turbulence_by_sector,
-    turbulence_by_speed,
+    turbulence_in_sectors,
+    turbulence_in_speed_bins,
     turbulence_intensity,
     wake_standard_deviation_frandsen_2005,
     wake_turbulence_frandsen_2007,
@@ -36,7 +36,7 @@ def test_intensity_by_hand():
 def test_bins_are_those_of_a_plain_loop(station):
     # The same arithmetic with masks, numpy.mean and numpy.std(ddof=1).
     speed, deviation, _ = station
-    table = turbulence_by_speed(speed, deviation)
+    table = turbulence_in_speed_bins(speed, deviation)
     known = (speed > 0.0) & ~np.isnan(deviation)
     assert table.count.sum() == known.sum()
     for low, high, count, mean, spread, representative in zip(
@@ -62,7 +62,7 @@ def test_bins_are_those_of_a_plain_loop(station):
 
 def test_sectors_are_those_of_a_plain_loop(station):
     speed, deviation, direction = station
-    table = turbulence_by_sector(speed, deviation, direction, sector_count=6)
+    table = turbulence_in_sectors(speed, deviation, direction, sector_count=6)
     assert table.mean.shape == (6, table.speed_edges.size - 1)
     known = (speed > 0.0) & ~np.isnan(deviation) & ~np.isnan(direction)
     assert table.count.sum() == known.sum()
@@ -129,10 +129,10 @@ def test_gust_factor():
     [
         (lambda: turbulence_intensity(8.0, 15.0 * 8), "not a percentage or a maximum"),
         (lambda: turbulence_intensity(8.0, -1.0), "speed_standard_deviation must not be negative"),
-        (lambda: turbulence_by_speed([8.0], [1.0, 2.0]), "series of one length"),
-        (lambda: turbulence_by_speed([0.0], [0.0]), "none of 1"),
-        (lambda: turbulence_by_sector([8.0], [1.0], [10.0, 20.0]), "length of wind_speed"),
-        (lambda: turbulence_by_sector([8.0], [1.0], [np.nan]), "check the vane"),
+        (lambda: turbulence_in_speed_bins([8.0], [1.0, 2.0]), "series of one length"),
+        (lambda: turbulence_in_speed_bins([0.0], [0.0]), "none of 1"),
+        (lambda: turbulence_in_sectors([8.0], [1.0], [10.0, 20.0]), "length of wind_speed"),
+        (lambda: turbulence_in_sectors([8.0], [1.0], [np.nan]), "check the vane"),
         (lambda: wake_turbulence_frandsen_2007(5.0, 0.8, 8.0), "looks like percent"),
         (lambda: wake_turbulence_frandsen_2007(0.0, 0.8, 0.1), "distance_diameters must be"),
         (lambda: effective_turbulence(0.1, np.full(9, 0.2), 4.0), "at most 8 neighbours, got 9"),

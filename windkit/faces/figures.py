@@ -28,7 +28,7 @@ from windkit.faces.figures_measured import (
     profile,
     recovery_map,
     speed_distribution,
-    turbulence_by_speed,
+    turbulence_in_speed_bins,
 )
 from windkit.faces.figures_rose import wind_rose
 from windkit.faces.look import save_png, use
@@ -51,7 +51,7 @@ __all__ = [
     "speed_distribution",
     "tornado",
     "turbulence_against_classes",
-    "turbulence_by_speed",
+    "turbulence_in_speed_bins",
     "uncertainty_bars",
     "use",
     "wind_rose",

@@ -48,7 +48,7 @@ __all__ = [
     "profile",
     "recovery_map",
     "speed_distribution",
-    "turbulence_by_speed",
+    "turbulence_in_speed_bins",
 ]
 
 _WIND_SPEED = "Wind speed [m/s]"
@@ -178,7 +178,7 @@ def speed_distribution(
 
 
 @in_house_style
-def turbulence_by_speed(
+def turbulence_in_speed_bins(
     speed_centres: ArrayLike,
     mean: ArrayLike,
     representative: ArrayLike | None = None,

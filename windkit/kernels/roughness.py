@@ -18,8 +18,8 @@ from windkit.kernels.constants import VON_KARMAN_CONSTANT
 from windkit.kernels.profile import friction_velocity, log_law
 
 __all__ = [
+    "ROUGHNESS_CLASSES",
     "TERRAIN_ROUGHNESS",
-    "WIND_ATLAS_CLASSES",
     "change_roughness",
     "coriolis_parameter",
     "geostrophic_friction_velocity",
@@ -44,7 +44,7 @@ TERRAIN_ROUGHNESS: Mapping[str, float] = MappingProxyType(
 #: Roughness length [m] by roughness class: whole classes 0 to 3 from Troen and Petersen 1989,
 #: European Wind Atlas; half classes and 4 as wind-energy teaching texts print them. There is no
 #: formula between them that fits all pairs, so none is offered.
-WIND_ATLAS_CLASSES: Mapping[float, float] = MappingProxyType(
+ROUGHNESS_CLASSES: Mapping[float, float] = MappingProxyType(
     {
         0.0: 0.0002,
         0.5: 0.0024,

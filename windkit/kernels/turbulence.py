@@ -20,8 +20,8 @@ __all__ = [
     "TurbulenceTable",
     "effective_turbulence",
     "gust_factor",
-    "turbulence_by_sector",
-    "turbulence_by_speed",
+    "turbulence_in_sectors",
+    "turbulence_in_speed_bins",
     "turbulence_intensity",
     "wake_standard_deviation_frandsen_2005",
     "wake_turbulence_frandsen_2007",
@@ -100,7 +100,7 @@ def turbulence_intensity(
     return intensity[()]
 
 
-def turbulence_by_speed(
+def turbulence_in_speed_bins(
     wind_speed: ArrayLike, speed_standard_deviation: ArrayLike, *, bin_width: float = 1.0
 ) -> TurbulenceTable:
     """Mean, spread and 90 % value of turbulence intensity in each speed bin, all directions.
@@ -136,7 +136,7 @@ def turbulence_by_speed(
     return _table(v, intensity, np.zeros(v.size, dtype=np.intp), 1, bin_width, squeeze=True)
 
 
-def turbulence_by_sector(
+def turbulence_in_sectors(
     wind_speed: ArrayLike,
     speed_standard_deviation: ArrayLike,
     wind_direction: ArrayLike,
@@ -149,7 +149,7 @@ def turbulence_by_sector(
     Parameters
     ----------
     wind_speed, speed_standard_deviation : array_like
-        As for `turbulence_by_speed`.
+        As for `turbulence_in_speed_bins`.
     wind_direction : array_like
         Directions [deg, from]; records without one are left out.
     sector_count : int
@@ -165,7 +165,7 @@ def turbulence_by_sector(
     Raises
     ------
     ValueError
-        As `turbulence_by_speed`; if a direction is outside 0 to 360.
+        As `turbulence_in_speed_bins`; if a direction is outside 0 to 360.
     """
     v, intensity = _known_records(wind_speed, speed_standard_deviation)
     direction = floats(wind_direction)

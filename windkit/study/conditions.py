@@ -121,8 +121,8 @@ def assess_conditions(study: Study) -> Conditions:
     }
     if turbulence is not None:
         tables |= {
-            "turbulence_by_speed": turbulence.by_speed,
-            "turbulence_by_sector": turbulence.by_sector,
+            "turbulence_in_speed_bins": turbulence.by_speed,
+            "turbulence_in_sectors": turbulence.by_sector,
         }
     if extremes is not None:
         tables |= {

@@ -18,7 +18,7 @@ from windkit.kernels.curve import PowerCurve, betz_check, mean_power_weibull
 from windkit.kernels.energy import HOURS_PER_YEAR, annual_energy
 from windkit.kernels.exceedance import exceedance_level
 from windkit.kernels.profile import log_law, power_law
-from windkit.kernels.roughness import WIND_ATLAS_CLASSES, change_roughness, coriolis_parameter
+from windkit.kernels.roughness import ROUGHNESS_CLASSES, change_roughness, coriolis_parameter
 from windkit.kernels.stream import BETZ_LIMIT, stream_power, swept_area, wind_power_density
 from windkit.kernels.weibull import weibull_energy_pattern_factor, weibull_mean
 from windkit.study.artifacts import Outcome, Row
@@ -235,7 +235,7 @@ def _at_hub(
         return float(carried), (
             f"carried up by the log law over a roughness of {site:g} m, for screening only"
         )
-    source = WIND_ATLAS_CLASSES[rough.figure_roughness_class]
+    source = ROUGHNESS_CLASSES[rough.figure_roughness_class]
     try:
         coriolis = coriolis_parameter(settings.site.latitude_deg)
     except ValueError as error:

@@ -17,8 +17,8 @@ from windkit.kernels.design_classes import REFERENCE_TURBULENCE, mildest_class, 
 from windkit.kernels.turbulence import (
     TurbulenceTable,
     effective_turbulence,
-    turbulence_by_sector,
-    turbulence_by_speed,
+    turbulence_in_sectors,
+    turbulence_in_speed_bins,
     wake_standard_deviation_frandsen_2005,
 )
 from windkit.study.settings import Settings
@@ -122,7 +122,7 @@ def site_turbulence(
     v, sigma = np.where(moving, v, np.nan), np.where(moving, sigma, np.nan)
     if not np.isfinite(v + sigma).any():
         return "turbulence is not assessed: no interval has a mean and a standard deviation"
-    whole = turbulence_by_speed(v, sigma)
+    whole = turbulence_in_speed_bins(v, sigma)
     by_speed = _by_speed(whole)
     name, distances = _most_disturbed(settings)
     by_speed["effective"] = _with_wakes(by_speed, distances) if distances.size else np.nan
@@ -173,10 +173,10 @@ def _by_sector(record: pd.DataFrame, settings: Settings, v: Array, sigma: Array)
     if not np.isfinite(windy + sigma + direction).any():
         return NO_TURBULENCE.by_sector
     # One bin of all speeds, then bins of one metre a second for the one about 15.
-    wide = turbulence_by_sector(
+    wide = turbulence_in_sectors(
         windy, sigma, direction, sector_count=sectors, bin_width=4.0 * float(np.nanmax(windy))
     )
-    fine = turbulence_by_sector(windy, sigma, direction, sector_count=sectors)
+    fine = turbulence_in_sectors(windy, sigma, direction, sector_count=sectors)
     at = 15 if fine.count.shape[1] > 15 else None
     enough = wide.count[:, 0] >= LEAST_IN_BIN
     counts_15 = fine.count[:, at] if at is not None else np.zeros(sectors, dtype=int)

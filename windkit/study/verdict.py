@@ -37,7 +37,7 @@ __all__ = [
     "INSIDE",
     "MACHINE",
     "NOT_ASSESSED",
-    "OPEN",
+    "UNKNOWN",
     "OUTSIDE",
     "TURBULENCE",
     "WIND",
@@ -70,7 +70,7 @@ _NEVER_ASSESSED = (
 FIFTY_YEAR_WIND = "ten-minute wind of 50 years"
 MACHINE, EVERY_CLASS = "the machine", "every class"
 #: Groups of the table, in its order.
-WIND, TURBULENCE, AIR, OPEN = "wind", "turbulence", "profile and air", "without data"
+WIND, TURBULENCE, AIR, UNKNOWN = "wind", "turbulence", "profile and air", "without data"
 
 
 @dataclass(frozen=True)
@@ -122,7 +122,7 @@ def verdict_table(figures: SiteFigures, turbine: TurbineSettings) -> pd.DataFram
         WIND: _speeds(figures, turbine),
         TURBULENCE: _turbulence(figures, turbine),
         AIR: _standing(figures, turbine),
-        OPEN: [
+        UNKNOWN: [
             (name, EVERY_CLASS, np.nan, np.nan, "", NOT_ASSESSED, "no data in this study")
             for name in _NEVER_ASSESSED
         ],

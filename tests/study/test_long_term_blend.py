@@ -12,6 +12,7 @@ import windkit
 from tests.calibration.calibrate import as_frames, run, summary
 from windkit.kernels.simulated import simulate_site
 from windkit.study.errors import StudyError
+from windkit.study.long_term_methods import method_scores, method_series
 
 MILES_PER_HOUR = 0.44704  # [m/s], exact by definition
 
@@ -113,11 +114,39 @@ def test_result_has_every_part_of_the_answer(study, corrected):
     assert corrected.windows["years"].iloc[0] == 5
     assert corrected.windows["mean_speed"].iloc[-1] == pytest.approx(corrected.mean_speed)
     assert corrected.series["wind_speed"].mean() == pytest.approx(corrected.mean_speed)
-    assert "doing nothing" in corrected.methods.index
+    assert {"doing nothing", "variance ratio by season", "ratio of means by season"} <= set(
+        corrected.methods.index
+    )
     by_reference = corrected.methods_by_reference
     assert by_reference.index.get_level_values("reference").nunique() == 3
     best = by_reference.loc[corrected.references.index[0]]
     pd.testing.assert_frame_equal(best, corrected.methods)
+
+
+def test_a_year_whose_seasons_differ_is_best_fitted_by_season():
+    # Half as much wind again at the site as at the reference in winter, none more in summer.
+    rng = np.random.default_rng(1)
+    times = pd.date_range("2015-01-01", periods=3 * 365 * 24, freq="h")
+    x = 7.0 * rng.weibull(2.0, times.size)
+    months = times.month.to_numpy()
+    y = (
+        x
+        * (1.25 + 0.25 * np.cos(2 * np.pi * times.day_of_year.to_numpy() / 365))
+        * rng.uniform(0.9, 1.1, x.size)
+    )
+    year = slice(0, 365 * 24)
+    scores = method_scores(y[year], x[year], None, times[year])
+    assert scores.index[0] in ("ratio of means by season", "variance ratio by season")
+    series = method_series(
+        str(scores.index[0]), y[year], x[year], x, 8.0, months=months[year], months_long=months
+    )
+    winter = np.isin(months, [12, 1, 2])
+    known = y[winter].mean() / y.mean()
+    assert series[winter].mean() / 8.0 == pytest.approx(known, rel=0.03)
+    part = slice(0, 200 * 24)
+    assert not any(
+        "season" in name for name in method_scores(y[part], x[part], None, times[part]).index
+    )
 
 
 def test_more_months_are_worth_something():

@@ -269,9 +269,11 @@ def _series(
     both = np.isfinite(inputs.site) & np.isfinite(speed)
     X = speed if direction is None else np.column_stack([speed, direction])
     table = pd.DataFrame(index=inputs.times)
+    months = np.asarray(inputs.times.month)
     table["wind_speed"] = method_series(
-        method, inputs.site[both], X[both], X, mean_speed, seed=seed
-    )
+        method, inputs.site[both], X[both], X, mean_speed,
+        months=months[both], months_long=months, seed=seed,
+    )  # fmt: skip
     if direction is not None and own is not None:
         table["wind_direction"] = SectorVeer().fit(direction, own).predict(direction)
     return table

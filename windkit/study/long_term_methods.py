@@ -23,6 +23,7 @@ from windkit.kernels.correction_methods import (
     TotalLeastSquares,
     WeibullScaling,
 )
+from windkit.kernels.correction_seasons import BySeason
 from windkit.kernels.estimator import SiteEstimator, copy_of
 
 __all__ = ["method_estimators", "method_scores", "method_series"]
@@ -34,6 +35,9 @@ Power = Callable[[Array], Array]
 MOST_BLOCKS = 12
 #: Fewest pairs in a sector of its own, as a share of all pairs [1] and at least: our choice.
 SECTOR_SHARE, LEAST_IN_SECTOR = 0.03, 40
+#: Calendar months a campaign must have seen for its methods to be fitted by season [1], and the
+#: fewest pairs of a season as a share of all pairs [1]: three months of a year. Our choice.
+MONTHS_FOR_SEASONS, SEASON_SHARE = 10, 0.2
 #: Methods whose series has not the site's spread and must not feed energy: a regression has too
 #: little, a line through both errors too much wherever the site is the noisier record.
 WITHOUT_SPREAD = (
@@ -44,8 +48,10 @@ WITHOUT_SPREAD = (
 )
 
 
-def method_estimators(pair_count: int, with_direction: bool, seed: int) -> dict[str, SiteEstimator]:
-    """The methods by name, unfitted."""
+def method_estimators(
+    pair_count: int, with_direction: bool, with_seasons: bool, seed: int
+) -> dict[str, SiteEstimator]:
+    """The methods by name, unfitted; those by season take the month as the last column of X."""
     plain: dict[str, SiteEstimator] = {
         "ratio of means": RatioOfMeans(),
         "linear regression": LinearRegression(),
@@ -56,12 +62,19 @@ def method_estimators(pair_count: int, with_direction: bool, seed: int) -> dict[
         "conditional distributions": ConditionalDistributions(seed=seed),
         "Weibull scaling": WeibullScaling(),
     }
-    if not with_direction:
-        return plain
-    least = max(LEAST_IN_SECTOR, round(SECTOR_SHARE * pair_count))
-    # A line through both errors has no meaning in a sector where the two do not rise together.
-    split = {k: e for k, e in plain.items() if k not in ("total least squares",)}
-    return plain | {f"{k} by sector": BySector(e, min_count=least) for k, e in split.items()}
+    found = dict(plain)
+    if with_direction:
+        least = max(LEAST_IN_SECTOR, round(SECTOR_SHARE * pair_count))
+        # A line through both errors has no meaning in a sector where the two do not rise together.
+        split = {k: e for k, e in plain.items() if k != "total least squares"}
+        found |= {f"{k} by sector": BySector(e, min_count=least) for k, e in split.items()}
+    if with_seasons:
+        season = max(LEAST_IN_SECTOR, round(SEASON_SHARE * pair_count))
+        found |= {
+            f"{k} by season": BySeason(plain[k], min_count=season)
+            for k in ("ratio of means", "variance ratio")
+        }
+    return found
 
 
 def method_scores(
@@ -96,12 +109,14 @@ def method_scores(
     """
     X = reference if direction is None else np.column_stack([reference, direction])
     blocks = _blocks(times)
-    estimators = method_estimators(site.size, direction is not None, seed)
+    months = np.asarray(times.month)
+    estimators = method_estimators(site.size, direction is not None, _whole_year(months), seed)
     rows: dict[str, dict[str, float]] = {}
     learner = _boosted_trees(seed)
     for name, estimator in estimators.items():
-        rows[name] = _held_out(copy_of(estimator), X, site, blocks, power)
-        rows[name] |= _season_halves(copy_of(estimator), X, site, times)
+        its = _columns(estimator, X, months)
+        rows[name] = _held_out(copy_of(estimator), its, site, blocks, power)
+        rows[name] |= _season_halves(copy_of(estimator), its, site, times)
     if learner is not None and site.size >= 200:
         filled = X if X.ndim == 2 else X[:, None]
         with _one_thread():
@@ -126,12 +141,29 @@ def method_series(
     X_long: Array,
     mean_speed: float,
     *,
+    months: NDArray[np.int64],
+    months_long: NDArray[np.int64],
     seed: int = 0,
 ) -> Array:
-    """Long-term speeds [m/s] by one method, not below zero, with the given mean."""
-    estimator = method_estimators(site.size, X.ndim == 2, seed)[method]
-    predicted = np.maximum(estimator.fit(X, site).predict(X_long), 0.0)
+    """Long-term speeds [m/s] by one method, not below zero, with the given mean.
+
+    `X` and `months` are of the concurrent pairs, `X_long` and `months_long` of the long record.
+    """
+    estimator = method_estimators(site.size, X.ndim == 2, _whole_year(months), seed)[method]
+    estimator.fit(_columns(estimator, X, months), site)
+    predicted = np.maximum(estimator.predict(_columns(estimator, X_long, months_long)), 0.0)
     return np.asarray(predicted * (mean_speed / np.nanmean(predicted)))
+
+
+def _whole_year(months: NDArray[np.int64]) -> bool:
+    return len(np.unique(months)) >= MONTHS_FOR_SEASONS
+
+
+def _columns(estimator: SiteEstimator, X: Array, months: NDArray[np.int64]) -> Array:
+    """What an estimator's X is made of: by season, speed and month."""
+    if not isinstance(estimator, BySeason):
+        return X
+    return np.column_stack([X if X.ndim == 1 else X[:, 0], months])
 
 
 class _Nothing(SiteEstimator):

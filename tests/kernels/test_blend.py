@@ -2,6 +2,7 @@
 
 import numpy as np
 import pytest
+from scipy import stats
 from statsmodels.tsa.arima_process import ArmaProcess
 
 from windkit.kernels.back_test import (
@@ -107,12 +108,16 @@ def test_scale_of_a_sensor_makes_no_difference():
 def test_coverage_and_widening_of_known_errors():
     rng = np.random.default_rng(0)
     even = rng.normal(size=(10, 2000))
-    assert stand_in_coverage(even, 0.8) == pytest.approx(0.8, abs=0.01)
+    # Nine others: an interval of Student's t with 4 x 8 degrees of freedom, held by the normal.
+    claimed = stats.norm.cdf(stats.t.ppf(0.9, 32)) * 2 - 1
+    assert stand_in_coverage(even, 0.8) == pytest.approx(claimed, abs=0.006)
     assert widening_factor(even) == pytest.approx(1.0, abs=0.02)
     # Two stand-ins of which one errs three times as far: neither's errors speak for the other.
-    uneven = even[:2] * np.array([[1.0], [3.0]])
+    uneven = even[:2] * np.array([[1.0], [6.0]])
     assert stand_in_coverage(uneven, 0.8) < 0.75
     assert widening_factor(uneven) > 1.3
+    # That one stand-in says little of another is allowed for in the draws, not asked for again.
+    assert widening_factor(even[:2] * np.array([[1.0], [1.5]])) == 1.0
 
 
 def test_draws_widen_for_few_stand_ins():
@@ -120,10 +125,22 @@ def test_draws_widen_for_few_stand_ins():
     many, few = rng.normal(size=(40, 300)), rng.normal(size=(2, 300))
     wide = np.quantile(draw_errors(few, 4000), [0.1, 0.9])
     narrow = np.quantile(draw_errors(many, 4000), [0.1, 0.9])
-    # Student's t with 4 degrees of freedom has its 90 % point at 1.533, the normal at 1.282.
-    np.testing.assert_allclose(wide, [-1.533, 1.533], atol=0.12)
+    # Student's t with 4 degrees of freedom has its 90 % point at 1.533, the normal at 1.282. The
+    # site has two references where a stand-in had one: variance 1 + 1/2 in place of 1 + 1.
+    np.testing.assert_allclose(wide, np.sqrt(0.75) * np.array([-1.533, 1.533]), atol=0.12)
     np.testing.assert_allclose(narrow, [-1.282, 1.282], atol=0.06)
     np.testing.assert_array_equal(draw_errors(few, 100, seed=3), draw_errors(few, 100, seed=3))
+
+
+def test_a_site_among_exchangeable_stations_errs_as_drawn():
+    # Three of four stations alike stand in for the fourth: the rms of the draws is its rms error.
+    rng = np.random.default_rng(5)
+    stations = rng.normal(size=(4, 20_000))
+    site = stations[0] - stations[1:].mean(axis=0)
+    stand_ins = stations[1:] - (stations[1:].sum(axis=0) - stations[1:]) / 2
+    draws = draw_errors(stand_ins, 4000)
+    # Student's t with 8 degrees of freedom has the variance 8/6.
+    assert np.std(draws) == pytest.approx(np.sqrt(8 / 6) * np.std(site), rel=0.04)
 
 
 def test_variance_of_a_mean_with_memory():

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
+from scipy import special
 
 __all__ = [
     "draw_errors",
@@ -23,10 +24,14 @@ Array = NDArray[np.float64]
 #: Degrees of freedom each stand-in beyond the first brings to the spread of the errors [1].
 #: Set on simulated sites with two and three references, where few stand-ins make it matter.
 FREEDOM_PER_STAND_IN = 4
+#: What a single stand-in counts for beyond the first [1]: its t has three degrees of freedom.
+LEAST_STAND_INS = 0.75
 
 
 def stand_in_coverage(errors: Array, level: float) -> float:
     """Share of stand-ins' errors within an interval made of the other stand-ins' errors.
+
+    The interval is made as for the site: spread out for the number of stand-ins it rests on.
 
     Parameters
     ----------
@@ -40,7 +45,10 @@ def stand_in_coverage(errors: Array, level: float) -> float:
 
 
 def widening_factor(errors: Array, level: float = 0.8) -> float:
-    """Factor, at least 1, with which those intervals would have held `level` of the truths."""
+    """Factor, at least 1, with which those intervals would have held `level` of the truths.
+
+    What the draws are spread out by already, for their few stand-ins, is not asked for twice.
+    """
     return float(max(1.0, np.nanquantile(_over_others(errors, level), level)))
 
 
@@ -59,7 +67,13 @@ def draw_errors(errors: Array, count: int, *, weight: Array | None = None, seed:
     -------
     ndarray, shape (count,)
         Symmetric about 0: an error of either sign is held equally likely. Each is scaled as in
-        Student's t, with four degrees of freedom for each stand-in beyond the first.
+        Student's t, with four degrees of freedom for each stand-in beyond the first, and drawn in
+        because the site is corrected with one reference more than a stand-in.
+
+    Notes
+    -----
+    Of m stations that are alike and err independently, each is predicted by m - 1 others with a
+    variance of 1 + 1/(m - 1), and the site by all m with 1 + 1/m: the ratio is 1 - 1/m^2.
     """
     rng = np.random.default_rng(seed)
     stand_ins = errors.shape[0]
@@ -72,8 +86,8 @@ def draw_errors(errors: Array, count: int, *, weight: Array | None = None, seed:
     even = (np.arange(count) + rng.random(count)) / count
     size = np.interp(even, position, values[order])
     sign = rng.permutation(np.where(np.arange(count) % 2 == 0, 1.0, -1.0))
-    freedom = FREEDOM_PER_STAND_IN * (stand_ins - 1)
-    stretch = np.sqrt(freedom / rng.chisquare(freedom, count))
+    freedom = _freedom(stand_ins)
+    stretch = np.sqrt((1 - 1 / stand_ins**2) * freedom / rng.chisquare(freedom, count))
     return np.asarray(rng.permutation(size) * sign * stretch)
 
 
@@ -120,11 +134,19 @@ def persistent_mean_variance(count: int, autocorrelation: float) -> float:
     return float((1 + 2 * np.sum((1 - lags / count) * autocorrelation**lags)) / count)
 
 
+def _freedom(stand_ins: int) -> float:
+    """Degrees of freedom of Student's t; one stand-in alone counts as hardly any."""
+    return FREEDOM_PER_STAND_IN * max(stand_ins - 1, LEAST_STAND_INS)
+
+
 def _over_others(errors: Array, level: float) -> Array:
     """Size of each error over the half-width that the other stand-ins' errors make."""
     ratio = np.full(errors.shape, np.nan)
+    at = (1 + level) / 2
+    stretch = special.stdtrit(_freedom(errors.shape[0] - 1), at) / special.ndtri(at)
     for row in range(errors.shape[0]):
         others = np.abs(np.delete(errors, row, axis=0))
         if np.isfinite(others).any():
-            ratio[row] = np.abs(errors[row]) / max(float(np.nanquantile(others, level)), 1e-9)
+            half = stretch * float(np.nanquantile(others, level))
+            ratio[row] = np.abs(errors[row]) / max(half, 1e-9)
     return ratio

@@ -30,8 +30,8 @@ from windkit.study.verdict import (
     INSIDE,
     MACHINE,
     NOT_ASSESSED,
-    OPEN,
     OUTSIDE,
+    UNKNOWN,
     SiteFigures,
     verdict_table,
 )
@@ -265,7 +265,7 @@ def _said(
     machine = _about_the_machine(table)
     outside = machine.loc[machine["verdict"] == OUTSIDE, "condition"].tolist()
     open_ones = machine.loc[machine["verdict"] == NOT_ASSESSED, "condition"].tolist()
-    without = int((table["group"] == OPEN).sum())
+    without = int((table["group"] == UNKNOWN).sum())
     said["verdict"] = (
         f"Of {len(machine)} conditions held against the machine's own limits, "
         f"{int((machine['verdict'] == INSIDE).sum())} are inside"
@@ -278,7 +278,7 @@ def _said(
 
 def _about_the_machine(table: pd.DataFrame) -> pd.DataFrame:
     """Rows that speak of the machine: its own limits, and those that all classes share."""
-    return table[table["against"].isin([MACHINE, EVERY_CLASS]) & (table["group"] != OPEN)]
+    return table[table["against"].isin([MACHINE, EVERY_CLASS]) & (table["group"] != UNKNOWN)]
 
 
 def _sentence(text: str) -> str:

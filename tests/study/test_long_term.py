@@ -241,3 +241,24 @@ def test_too_little_overlap_is_refused(small):
 def test_the_step_waits_for_the_one_before_it(small):
     with pytest.raises(StudyError, match=r"step 'measure' has left no artifact yet.*Each step"):
         correct_to_long_term(open_study(small))
+
+
+def test_the_blends_parts_are_its_uncertainty_and_a_short_campaign_costs_more(small):
+    # UNC-6: independent parts add in quadrature; what is claimed is what its parts make.
+    edit(small / "study.toml", 'method = "variance_ratio"', 'method = "blend"')
+    run_steps(small, "screen", "measure")
+    long = correct_to_long_term(open_study(small))
+    total = long.outcome.number("long_term.standard_uncertainty")
+    assert np.sqrt((long.parts["standard_uncertainty"] ** 2).sum()) == pytest.approx(total)
+    assert long.parts["share"].sum() == pytest.approx(1.0)
+    low, high = long.outcome.value("long_term.interval_80_m_s")
+    assert low < long.outcome.number("long_term.mean_speed_m_s") < high
+
+    mast = small / "data" / "mast.csv"
+    lines = mast.read_text().splitlines()
+    mast.write_text("\n".join(lines[: 1 + 40 * 24]) + "\n")  # forty days of the same record
+    run_steps(small, "measure")
+    short = correct_to_long_term(open_study(small))
+    assert short.outcome.number("long_term.standard_uncertainty") > total
+    assert "short campaign" in set(short.parts["part"])
+    assert any("no basis for financing" in warning for warning in short.outcome.warnings)

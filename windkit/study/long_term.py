@@ -41,6 +41,9 @@ __all__ = ["BLEND", "LongTerm", "correct_to_long_term", "reference_record"]
 
 #: The method that uses every reference.
 BLEND = "blend"
+#: Months of data below which a correction is no basis for a loan: Basse et al. 2021, Wind Energ.
+#: Sci. 6:1473, abstract (id G4).
+LEAST_MONTHS_FOR_FINANCE = 6.0
 #: The line shown where the study stands on the blend.
 _SHOWN_LINE = "variance_ratio"
 
@@ -171,7 +174,9 @@ def correct_to_long_term(study: Study) -> LongTerm:
     closed_form, warnings = closed_form_parts(
         one.pairs, site["wind_speed"], one.series, one.methods, variability, variability_basis
     )
-    parts = _blend_parts(correction) if blended else _line_parts(closed_form, correction)
+    parts = (
+        _blend_parts(correction, closed_form) if blended else _line_parts(closed_form, correction)
+    )
     mean_speed = correction.mean_speed if blended else float(series["wind_speed"].mean())
     interval, total = _interval(correction, parts, mean_speed, blended)
     chosen = _BLEND_LABEL if blended else one.chosen
@@ -202,7 +207,11 @@ def correct_to_long_term(study: Study) -> LongTerm:
         "longer_campaign": correction.longer_campaign,
     }
     # The blend's season is tried on stand-ins, so the closed form's mark is no warning for it.
-    warnings = [*(warnings if not blended else _short_of_years(one)), *correction.notes]
+    warnings = [
+        *(warnings if not blended else _short_of_years(one)),
+        *_short_campaign(site["wind_speed"]),
+        *correction.notes,
+    ]
     return LongTerm(
         correction=correction,
         concurrent=one.pairs,
@@ -255,9 +264,24 @@ def _blend_series(correction: LongTermCorrection, one: OneReference) -> pd.DataF
     return series
 
 
-def _blend_parts(correction: LongTermCorrection) -> pd.DataFrame:
-    """Columns part, standard_uncertainty, share, basis; the parts of the blend's draws."""
-    parts = correction.parts.reset_index().rename(columns={"how": "basis"})
+def _blend_parts(correction: LongTermCorrection, closed_form: pd.DataFrame) -> pd.DataFrame:
+    """Columns part, standard_uncertainty, share, basis; never less than the closed form asks.
+
+    A short campaign with few references leaves the stand-ins little to show; the published form
+    and the months not measured are then the floor.
+    """
+    parts = correction.parts.drop("representativeness").reset_index()
+    parts = parts.rename(columns={"how": "basis"})
+    asked = float(combine_in_quadrature(closed_form["standard_uncertainty"].to_numpy(dtype=float)))
+    beyond = max(asked**2 - correction.standard_uncertainty**2, 0.0) ** 0.5
+    if beyond > 0:
+        told = f"the closed form and the months not measured ask for {asked:.1%} together"
+        parts.loc[len(parts), ["part", "standard_uncertainty", "basis"]] = [
+            "short campaign", beyond, told,
+        ]  # fmt: skip
+    variance = parts["standard_uncertainty"].astype(float) ** 2
+    parts["standard_uncertainty"] = parts["standard_uncertainty"].astype(float)
+    parts["share"] = variance / variance.sum()
     return parts[["part", "standard_uncertainty", "share", "basis"]]
 
 
@@ -282,10 +306,18 @@ def _interval(
     correction: LongTermCorrection, parts: pd.DataFrame, mean_speed: float, blended: bool
 ) -> tuple[dict[float, tuple[float, float]], float]:
     """Intervals by level [m/s] and the standard uncertainty [1]."""
-    if blended:
-        levels = {level: correction.interval(level) for level in (0.8, 0.95)}
-        return levels, correction.standard_uncertainty
     total = float(combine_in_quadrature(parts["standard_uncertainty"].to_numpy(dtype=float)))
+    if blended:
+        # What was added to the parts widens the draws' intervals about the mean alike.
+        widened = total / correction.standard_uncertainty
+        levels = {}
+        for level in (0.8, 0.95):
+            low, high = correction.interval(level)
+            levels[level] = (
+                mean_speed - widened * (mean_speed - low),
+                mean_speed + widened * (high - mean_speed),
+            )
+        return levels, total
     normal = {
         level: (
             float(exceedance_level(mean_speed, total, (1 + level) / 2)),
@@ -320,6 +352,17 @@ def _short_of_years(one: OneReference) -> list[str]:
     ]
 
 
+def _short_campaign(site: pd.Series) -> list[str]:
+    """A warning for a campaign too short to lend upon."""
+    months = float(site.notna().sum()) / HOURS_PER_MEAN_YEAR * 12
+    if months >= LEAST_MONTHS_FOR_FINANCE:
+        return []
+    return [
+        f"The campaign holds {months:.1f} months of data. Below six a correction can be worse than "
+        "none; these figures are no basis for financing, and P95 and P99 least of all."
+    ]
+
+
 def _rows(
     study: Study,
     measured: Artifact,
@@ -338,8 +381,13 @@ def _rows(
     """Figures of merit of the step."""
     blended = study.settings.long_term.method == BLEND
     span = f"{series.index[0]:%Y-%m-%d} to {series.index[-1]:%Y-%m-%d}"
-    told = "draws from stand-ins' errors" if blended else "normal, from the parts below"
-    source = f"of {len(correction.references)}" if blended else f"from {shown}"
+    one_only = len(correction.references) == 1
+    told = "normal, from the parts of step 3"
+    if blended:
+        told = "from an assumed error, one reference" if one_only else "stand-ins' errors"
+    source = f"from {shown}"
+    if blended:
+        source = f"({shown} alone)" if one_only else f"({len(correction.references)})"
     held = correction.back_test.set_index("claimed")["held"]
     rows = [
         Row("long_term.mean_speed_m_s", "Long-term mean wind speed at the mast", mean_speed, "m/s",

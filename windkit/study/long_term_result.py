@@ -80,9 +80,9 @@ class LongTermCorrection:
 
     @property
     def standard_uncertainty(self) -> float:
-        """Half the middle 68.3 % of the draws over the mean [1]."""
-        low, high = self.interval(0.6827)
-        return (high - low) / 2 / self.mean_speed
+        """Quadrature of `parts`, for the references' own period [1]."""
+        own = self.parts["standard_uncertainty"].drop("representativeness")
+        return float(np.sqrt((own**2).sum()))
 
     def interval(self, level: float = 0.8, *, future: bool = False) -> tuple[float, float]:
         """Lowest and highest long-term mean [m/s] at a level such as 0.8.

@@ -183,9 +183,13 @@ def test_rose_takes_the_place_of_plain_axes():
     assert figures.wind_rose([5.0], [10.0], ax=ax) is ax
 
 
-def test_rose_without_a_direction_is_refused():
-    with pytest.raises(ValueError, match=r"no record has both a direction and a speed above 0\.5"):
-        figures.wind_rose([5.0, 0.1], [np.nan, 10.0])
+def test_rose_without_a_direction_says_so_on_plain_axes():
+    # A mast without a vane: every direction is missing, and the chapter goes on.
+    for place in (None, plt.subplots(1, 2)[1][0], figures.wind_rose([5.0], [10.0])):
+        ax = figures.wind_rose([5.0, 0.1], [np.nan, 10.0], ax=place)
+        assert ax.name == "rectilinear"
+        said = [text.get_text() for text in ax.texts]
+        assert said == ["no record has both a direction and a speed\nabove 0.5 m/s"]
     with pytest.raises(ValueError, match="2 speeds and 1 directions"):
         figures.wind_rose([5.0, 6.0], [10.0])
 

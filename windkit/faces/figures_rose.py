@@ -23,6 +23,7 @@ from windkit.faces.look import (
     MUTED,
     class_colours,
     in_house_style,
+    nothing_to_draw,
     number_text,
 )
 from windkit.faces.wording import percent_number
@@ -74,11 +75,12 @@ def wind_rose(
     Raises
     ------
     ValueError
-        If speeds and directions differ in length, or no record has a direction.
+        If speeds and directions differ in length.
 
     Notes
     -----
-    The rings show the share of `count`, so the petals and what is printed below add up to one.
+    Where no record has a direction, as on a mast without a vane, the axes stays plain and says
+    so. The rings show the share of `count`, so the petals and what is printed below add up to one.
     """
     from windrose import WindroseAxes
 
@@ -91,10 +93,10 @@ def wind_rose(
         )
     drawn = np.isfinite(speed) & np.isfinite(direction) & (speed > calm_threshold)
     if not drawn.any():
-        raise ValueError(
-            f"no record has both a direction and a speed above {calm_threshold:g} m/s, so there "
-            f"is no rose to draw"
-        )
+        ax = _plain_axes(ax)
+        ax.set_title(title)
+        said = f"no record has both a direction and a speed\nabove {calm_threshold:g} m/s"
+        return nothing_to_draw(ax, said)
     total = int(np.isfinite(speed).sum()) if count is None else int(count)
     ax = _rose_axes(ax)
     assert isinstance(ax, WindroseAxes)
@@ -120,6 +122,20 @@ def wind_rose(
     ax.set_title(title, loc="center", pad=16)
     ax.text(0.5, -0.13, ", ".join(said), transform=ax.transAxes, ha="center", va="top", color=MUTED)
     return ax
+
+
+def _plain_axes(ax: Axes | None) -> Axes:
+    """Square axes for words, since round ones would ring them."""
+    import matplotlib.pyplot as plt
+    import windrose
+
+    if ax is None:
+        return plt.subplots(figsize=(5.2, 4.0))[1]
+    whole, place = ax.get_figure(), ax.get_subplotspec()
+    if not isinstance(ax, windrose.WindroseAxes) or whole is None or place is None:
+        return ax
+    ax.remove()
+    return whole.add_subplot(place)
 
 
 def _rose_axes(ax: Axes | None) -> Axes:

@@ -6,12 +6,14 @@ import base64
 import datetime as dt
 import re
 from html.parser import HTMLParser
+from types import SimpleNamespace
 
 import nbformat
 import pandas as pd
 import pytest
 from nbformat import v4
 
+from windkit.faces import views
 from windkit.faces.chapter import NOTES_TEMPLATE, render_chapter
 from windkit.faces.frozen import PANEL_STATE, PANEL_VIEW
 from windkit.faces.report import STATUS, Cover, versions_in_use, write_report
@@ -299,6 +301,45 @@ def test_a_panel_is_shown_as_it_stood(tmp_path):
     html = render_chapter(book, 3).html
     assert "<b>7.5</b>" in html
     assert "Figure 3.1" in html
+
+
+def test_a_panel_leaves_out_what_nobody_wrote_and_names_its_picture(tmp_path):
+    children = ["IPY_MODEL_n", "IPY_MODEL_r", "IPY_MODEL_p"]
+    buffer = {"path": ["value"], "encoding": "base64", "data": PIXEL}
+    state = {
+        "q": {"model_name": "VBoxModel", "state": {"children": children}},
+        "n": {"model_name": "TextModel", "state": {"value": "E. Marsh", "description": "Name"}},
+        "r": {"model_name": "TextModel", "state": {"value": "", "description": "Reason"}},
+        "p": {"model_name": "ImageModel", "state": {"format": "png"}, "buffers": [buffer]},
+    }
+    view = v4.new_output(
+        "display_data",
+        {
+            "application/vnd.jupyter.widget-view+json": {"model_id": "q"},
+            "text/plain": "ReviewPanel: 1 of 1 spans left to decide",
+        },
+    )
+    panels = {"application/vnd.jupyter.widget-state+json": {"state": state}}
+    plain = _notebook(tmp_path / "a.ipynb", _code("x", view), widgets=panels)
+    html = render_chapter(plain, 3).html
+    assert "E. Marsh" in html
+    assert "Reason" not in html
+    assert "Figure 3.1. Suspected span, as the panel shows it" in html
+    named = _notebook(tmp_path / "b.ipynb", _code("x", view, caption="Own"), widgets=panels)
+    assert "Figure 3.1. Own" in render_chapter(named, 3).html
+
+
+def test_where_a_step_was_written_is_for_the_workbook_only(tmp_path):
+    outcome = SimpleNamespace(step="measure", tables={"record": None})
+    said = views.written(outcome)
+    shown = _shown(text_markdown=said._repr_markdown_(), text_plain=repr(said))
+    other = _shown(text_markdown="Two rows were set aside.", text_plain="Two rows")
+    book = _notebook(
+        tmp_path / "a.ipynb", _code("x", shown, other, _printed("Written to results/x.\n"))
+    )
+    html = render_chapter(book, 1).html
+    assert "results/" not in html
+    assert "Two rows were set aside." in html
 
 
 def test_a_summary_that_fetches_is_refused(tmp_path):

@@ -27,6 +27,13 @@ __all__ = ["NOTES_TAG", "NOTES_TEMPLATE", "Chapter", "render_chapter"]
 NOTES_TAG = "analyst-notes"
 NOTES_TEMPLATE = "*Analyst's notes: write here.*"
 
+#: How a workbook tells its analyst where a step went; the reader of a report has no such folder.
+_WORKBOOK_ONLY = "Written to results/"
+#: What the picture inside a panel is called where the cell does not say, by the panel's name.
+_PANEL_CAPTIONS = {"ReviewPanel": "Suspected span, as the panel shows it"}
+#: A text control nobody wrote in, as it stands in a frozen panel.
+_EMPTY_CONTROL = re.compile(r'<p class="panel-control">(?:<span [^>]*>[^<]*</span> )?<b>–</b></p>')
+
 _PICTURES = ("image/png", "image/jpeg", "image/svg+xml")
 #: How an object that has nothing to show shows itself.
 _BARE_OBJECT = re.compile(
@@ -183,7 +190,9 @@ class _Chapter:
         outputs = "\n".join(html for html in shown if html)
         return code + (f'\n<div class="output">\n{outputs}\n</div>' if outputs else "")
 
-    def _output(self, output: Mapping[str, Any], cell: Any) -> Iterator[str]:
+    def _output(
+        self, output: Mapping[str, Any], cell: Any, *, caption: str = ""
+    ) -> Iterator[str]:
         kind = output["output_type"]
         if kind == "error":
             raise ValueError(
@@ -195,11 +204,17 @@ class _Chapter:
             return
         data = output.get("data", {})
         if PANEL_VIEW in data:
+            panel = _text(data.get("text/plain", "")).partition(":")[0]
+            said = cell.metadata.get("caption") or _PANEL_CAPTIONS.get(panel, "")
             for frozen in _merged(frozen_outputs(data[PANEL_VIEW]["model_id"], self._panels)):
-                yield from self._output(frozen, cell)
+                html = _text(frozen.get("data", {}).get("text/html", ""))
+                if not _EMPTY_CONTROL.fullmatch(html):
+                    yield from self._output(frozen, cell, caption=said)
             return
-        caption = output.get("metadata", {}).get("caption") or cell.metadata.get("caption", "")
-        yield self._bundle(data, str(caption))
+        if _text(data.get("text/plain", "")).startswith(_WORKBOOK_ONLY):
+            return
+        own = output.get("metadata", {}).get("caption")
+        yield self._bundle(data, str(own or caption or cell.metadata.get("caption", "")))
 
     def _bundle(self, data: Mapping[str, Any], caption: str) -> str:
         if "text/html" in data:
@@ -224,7 +239,7 @@ class _Chapter:
 
     def _stream(self, output: Mapping[str, Any]) -> str:
         text = _text(output.get("text", ""))
-        if not text.strip():
+        if not text.strip() or text.startswith(_WORKBOOK_ONLY):
             return ""
         if output.get("name") != "stderr":
             return self._plain(text)

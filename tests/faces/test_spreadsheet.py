@@ -199,3 +199,12 @@ def test_a_table_longer_than_a_sheet_is_refused(tmp_path, monkeypatch):
     monkeypatch.setattr(spreadsheet, "MOST_ROWS", 3)
     with pytest.raises(ValueError, match="table 'long' has 3 rows, a sheet holds 2"):
         write_tables(tmp_path / "t.xlsx", {"long": pd.DataFrame({"a": [1, 2, 3]})})
+
+
+def test_no_head_of_a_column_is_empty(tmp_path):
+    sectors = pd.DataFrame({"share": [0.25, 0.75]}, index=pd.Index([0.0, 180.0]))
+    tables = {"yield.frequency": sectors, "other": sectors, "named": sectors.rename_axis("sector")}
+    book = openpyxl.load_workbook(write_tables(tmp_path / "t.xlsx", tables))
+    assert _rows(book["yield.frequency"])[0] == ["sector", "share"]
+    assert _rows(book["other"])[0] == ["row", "share"]
+    assert _rows(book["named"])[0] == ["sector", "share"]

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from types import SimpleNamespace
 
+import pandas as pd
 import pytest
 
 from windkit.faces import views
@@ -38,6 +39,38 @@ def test_a_listing_is_whole_and_says_names_as_words(folder):
     assert "…" not in shown
     assert "horizontal extrapolation" in shown
     assert "_" not in shown
+
+
+def test_every_reference_is_described(folder):
+    study = open_study(folder)
+    table = views.references(study)
+    described = {line[0]: line[1:] for line in table.cells}
+    assert list(described) == [each.name for each in study.settings.references]
+    for each in study.settings.references:
+        kind, height, interval, stamp, offset, north, elevation, files = described[each.name]
+        assert kind == each.kind
+        assert float(height) == each.channel(each.main_wind_speed).height_m
+        assert float(interval) == each.interval_min
+        assert stamp == f"{each.stamp} of interval"
+        assert float(offset) == each.utc_offset_h
+        assert north.startswith(each.direction_reference or "–")
+        assert elevation == ("–" if each.elevation_m is None else f"{each.elevation_m:g}")
+        assert files == ", ".join(each.files)
+
+
+def test_the_levels_on_the_cover_say_what_p90_keeps_of_p50():
+    levels = pd.DataFrame(
+        {
+            "years": [1, 10],
+            "standard_uncertainty": 0.1,
+            "P50": [20000.0] * 2,
+            "P90": [16000.0, 17e3],
+        }
+    )
+    table = views.exceedance_view(SimpleNamespace(tables={"levels": levels}))
+    assert [line[-1] for line in table.cells] == ["80.0\u00a0%", "85.0\u00a0%"]
+    assert table.cells[0][:3] == ["1 year", "20\u202f000", "16\u202f000"]
+    assert "P90/P50" in table.to_html()
 
 
 @pytest.mark.parametrize(

@@ -95,8 +95,8 @@ def wind_rose(
     if not drawn.any():
         ax = _plain_axes(ax)
         ax.set_title(title)
-        said = f"no record has both a direction and a speed\nabove {calm_threshold:g} m/s"
-        return nothing_to_draw(ax, said)
+        why = f"no record has both a direction and a speed\nabove {calm_threshold:g} m/s"
+        return nothing_to_draw(ax, why)
     total = int(np.isfinite(speed).sum()) if count is None else int(count)
     ax = _rose_axes(ax)
     assert isinstance(ax, WindroseAxes)

@@ -178,7 +178,7 @@ def _write_table(sheet: Worksheet, name: str, frame: pd.DataFrame) -> None:
     units = frame.attrs.get("units", {})
     whole = frame
     if not (isinstance(frame.index, pd.RangeIndex) and frame.index.name is None):
-        labels = [str(label) if label is not None else "" for label in frame.index.names]
+        labels = [_index_label(label, name) for label in frame.index.names]
         whole = frame.reset_index(names=labels)
     if len(whole) + 1 > MOST_ROWS:
         raise ValueError(
@@ -208,6 +208,13 @@ def _write_table(sheet: Worksheet, name: str, frame: pd.DataFrame) -> None:
     if whole.shape[1]:
         sheet.auto_filter.ref = sheet.dimensions
     _widths(sheet, [_width(head, values) for head, values in zip(heads, columns, strict=True)])
+
+
+def _index_label(label: Any, table: str) -> str:
+    """Head of an index column; only a frequency table leaves its rows, the sectors, unnamed."""
+    if label is not None:
+        return str(label)
+    return "sector" if "frequency" in table else "row"
 
 
 def _result_lines(

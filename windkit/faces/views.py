@@ -28,6 +28,7 @@ __all__ = [
     "listing",
     "method_scores",
     "reference_trial",
+    "references",
     "results",
     "say",
     "setting_text",
@@ -73,9 +74,15 @@ def results(outcome: Outcome, *, without: str = "") -> Table:
 
 
 def exceedance_view(outcome: Outcome) -> Table:
-    """P50 to P99 by period, as the cover shows them."""
+    """P50 to P99 by period and what P90 keeps of P50, as the cover shows them."""
     levels = outcome.tables["levels"].set_index("years").drop(columns="standard_uncertainty")
-    return exceedance_table_view(levels)
+    plain = exceedance_table_view(levels)
+    rows: list[dict[str, Any]] = [
+        {"Mean of": line[0], **values, "P90/P50": values["P90"] / values["P50"]}
+        for line, values in zip(plain.cells, levels.to_dict("records"), strict=True)
+    ]
+    formats: dict[str, Any] = dict.fromkeys(levels.columns, "MWh/year")
+    return Table(rows, caption=plain.caption, formats=formats | {"P90/P50": percent_text})
 
 
 def exceedance_text(results: Mapping[str, Any]) -> str:
@@ -155,6 +162,32 @@ def listing(study: Study, path: str) -> Table:
     # Numbers stand as they were written: this quotes the file.
     formats = {name: setting_text for name in used if name not in WORDED}
     return Table(rows, caption=f"[[{path}]] of study.toml", formats=formats, quiet=["basis"])
+
+
+def references(study: Study) -> Table:
+    """Every reference as `study.toml` describes it: what it is, on what clock, from which files."""
+    rows = []
+    for reference in study.settings.references:
+        north = setting_text(reference.direction_reference)
+        if reference.declination_deg is not None:
+            north = f"{north}, declination {setting_text(reference.declination_deg)}°"
+        main = reference.channel(reference.main_wind_speed)
+        rows.append(
+            {
+                "Reference": reference.name,
+                "Kind": reference.kind,
+                "Height of the main speed [m]": setting_text(main.height_m),
+                "Interval [min]": setting_text(reference.interval_min),
+                "Stamp marks": f"{reference.stamp} of interval",
+                "Ahead of UTC [h]": setting_text(reference.utc_offset_h),
+                "North of its directions": north,
+                "Elevation [m]": setting_text(reference.elevation_m),
+                "Files": setting_text(reference.files),
+            }
+        )
+    # Names and paths stand as they were written.
+    formats = dict.fromkeys(rows[0], str)
+    return Table(rows, caption="References as study.toml describes them", formats=formats)
 
 
 def _is_list_of_tables(value: Any) -> bool:

@@ -108,7 +108,8 @@ def test_conditions_and_the_verdict_are_in_results_and_report(study: Path, resul
     assert at_ten == pytest.approx(0.145, abs=0.02)
     assert conditions["lowest_temperature_c"] < 0 < conditions["highest_temperature_c"]
     verdict = conditions["verdict"]
-    assert verdict["inside"] + verdict["outside"] + verdict["not_assessed"] == 10
+    # Ten with a figure, five that no study has data for; the words share them out.
+    assert sum(verdict.values()) == 15
     page = (study / "handover" / "report.html").read_text()
     assert "Verdict: wind" in page
     assert "Verdict: turbulence" in page

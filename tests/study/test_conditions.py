@@ -12,13 +12,13 @@ from test_hub import channel
 
 from tests.small_study import SETTINGS, edit, run_steps
 from windkit.study.artifacts import load_artifact
-from windkit.study.conditions import assess_conditions
+from windkit.study.conditions import _counted, _warnings, assess_conditions
 from windkit.study.errors import StudyError
 from windkit.study.folder import open_study
 from windkit.study.settings import Settings, TurbineSettings, parse_settings
 from windkit.study.site_air import site_air
 from windkit.study.site_turbulence import SiteTurbulence, site_turbulence
-from windkit.study.verdict import SiteFigures, verdict_matrix, verdict_table
+from windkit.study.verdict import SiteFigures, about_the_machine, verdict_matrix, verdict_table
 
 V = np.array([10.0, 15.0, 20.0, 25.0])
 #: id IEC-3, IEC-3b: normal turbulence of class A at 10, 15, 20, 25 m/s over the speed.
@@ -61,7 +61,7 @@ def word(table: pd.DataFrame, condition: str, against: str) -> str:
         ("yearly mean", "class III", "outside"),
         ("ten-minute wind of 50", "class II", "inside"),
         ("ten-minute wind of 50", "class III", "outside"),
-        ("3 s gust", "class III", "inside"),
+        ("3 s gust", "class III", "near the limit"),
         ("ten-minute wind of one", "class III", "outside"),
         ("ten-minute wind of one", "class II", "inside"),
         ("turbulence, ambient", "class A", "inside"),
@@ -100,10 +100,13 @@ def test_a_declared_figure_outranks_the_class():
     assert word(table, "ten-minute wind of 50", "the machine") == "inside"
     assert word(table, "turbulence with wakes", "the machine") == "inside"
     note = table.set_index(["condition", "against"])["note"]
-    assert note["ten-minute wind of 50 years", "the machine"] == ""
+    assert note["ten-minute wind of 50 years, windiest turbine", "the machine"] == ""
     close = verdict_table(FIGURES, turbine(design_reference_speed_m_s=40.5))
     told = close.set_index(["condition", "against"])["note"]
-    assert "within one standard error" in told["ten-minute wind of 50 years", "the machine"]
+    assert (
+        "within one standard error"
+        in told["ten-minute wind of 50 years, windiest turbine", "the machine"]
+    )
 
 
 def test_what_nobody_declared_or_measured_is_not_assessed():
@@ -116,7 +119,7 @@ def test_what_nobody_declared_or_measured_is_not_assessed():
     assert word(table, "turbulence, ambient", "class A") == "not assessed"
     assert word(table, "lowest temperature", "extreme range of the standard") == "not assessed"
     notes = table.set_index(["condition", "against"])["note"]
-    assert notes["ten-minute wind of 50 years", "class I"] == "too short"
+    assert notes["ten-minute wind of 50 years, windiest turbine", "class I"] == "too short"
     assert notes["turbulence, ambient, 90 % value", "class A"] == "no spread"
     assert notes["yearly mean speed at the windiest hub", "the machine"] == (
         "not declared in [turbine]"
@@ -144,6 +147,37 @@ def test_the_matrix_has_a_word_for_each_class():
     ]  # fmt: skip
     assert matrix["Site"].tolist() == [8.0, 40.0, 52.0, 32.0]
     assert set(matrix["the machine"]) == {"inside"}
+
+
+def test_each_passed_limit_of_the_machine_is_a_warning_with_site_and_limit():
+    # id IEC-3: class A at 15 m/s has 2.696/15 = 18.0 %.
+    table = verdict_table(FIGURES, turbine(design_class="II", turbulence_class="A"))
+    passed = [text for text in _warnings(table) if text.startswith("Outside")]
+    assert len(passed) == 1
+    assert "turbulence with wakes" in passed[0]
+    assert "the limit of the machine is 21.0%" in passed[0]  # 2.096/10, the lowest bin
+    assert "from memory" not in " ".join(table["note"])
+
+
+def test_what_passes_a_class_is_told_beside_the_count():
+    told = _counted(verdict_table(FIGURES, turbine(design_class="II", turbulence_class="A+")))
+    assert "Of the 15 conditions" in told
+    assert "Outside against a class: yearly mean speed at the windiest hub (class III)" in told
+    assert "turbulence with wakes, 90 % value (class A, class B, class C)" in told
+
+
+@pytest.mark.parametrize(
+    ("v50", "expected", "margin"),
+    # One standard error is 1 m/s: 42.5 less 0.9 is near, less 1.1 is not; beyond is outside.
+    [(41.4, "inside", 1.1), (41.6, "near the limit", 0.9), (42.6, "outside", -0.1)],
+)
+def test_near_is_a_word_of_its_own_and_beyond_is_outside(v50, expected, margin):
+    table = verdict_table(dataclasses.replace(FIGURES, v50=v50), turbine())
+    assert word(table, "ten-minute wind of 50", "class II") == expected
+    row = table[table["condition"].str.startswith("ten-minute wind of 50")].set_index("against")
+    assert row.loc["class II", "margin"] == pytest.approx(margin)
+    cold = table[table["condition"] == "lowest temperature"].set_index("against")
+    assert cold["margin"]["extreme range of the standard"] == pytest.approx(5.0)
 
 
 # --- turbulence ------------------------------------------------------------------------------
@@ -197,6 +231,9 @@ def test_the_ninety_per_cent_value_and_its_class():
     assert out.mildest == "A"
     assert out.strong == pytest.approx(0.12, abs=0.002)
     assert out.judged == (pytest.approx(7.2), 25.0)
+    frame = gusty()
+    slow = found(mast(), frame[frame["speed_60"] < 20.5])
+    assert slow.bins_judged == (8.0, 20.0)
     assert out.by_sector["mean"].to_numpy() == pytest.approx(0.12, abs=0.002)
     assert out.by_sector["count"].sum() == (gusty()["speed_60"] >= 5).sum()
     assert out.classes["class A"].loc[15.0] == pytest.approx(0.17973, abs=1e-5)  # id IEC-3
@@ -292,6 +329,19 @@ def test_the_reference_speaks_for_more_winters_than_the_mast():
     assert line["hours_below_cold_limit_per_year"] == pytest.approx(876.6, rel=1e-3)
 
 
+def test_a_short_campaign_says_nothing_of_a_year_s_cold():
+    settings = parse_settings(tomllib.loads(SETTINGS))
+    index = pd.date_range("2022-01-01", "2022-02-10", freq="h", tz="UTC", name="time")
+    frame = pd.DataFrame({"temperature_5": 270.0}, index=index)
+    out = site_air(settings, frame, pd.Series(dtype=float), hub_height=90.0)
+    assert (out.lowest_c, out.highest_c, out.icing_hours) == (None, None, None)
+    # Ten of 28 days of February are less than half of it.
+    assert out.why_not == "temperature of 1 of 12 calendar months only"
+    assert "1 of 12 calendar months" in out.warnings[0]
+    assert not [row for row in out.rows if "below" in row.key]
+    assert "whole year" in out.said
+
+
 # --- the step --------------------------------------------------------------------------------
 
 
@@ -302,7 +352,14 @@ def test_the_step_on_a_study_without_ten_minute_data(finished):
     assert "turbulence" in step.outcome.said["verdict"]
     assert step.outcome.number("conditions.v50_m_s") > 15
     assert set(step.outcome.tables) >= {"verdict", "extreme_levels", "temperature"}
-    assert step.outcome.value("conditions.verdict.inside") >= 2
+    words = ("inside", "near_limit", "outside", "not_assessed")
+    counts = [step.outcome.number(f"conditions.verdict.{each}") for each in words]
+    printed = about_the_machine(step.verdict)
+    assert sum(counts) == len(printed) == 15
+    assert counts[0] + counts[1] >= 2
+    assert "Of the 15 conditions" in step.outcome.said["verdict"]
+    assert f"{counts[3]:.0f} of 15 conditions are not assessed" in step.outcome.warnings[-1]
+    assert "flow inclination" in step.outcome.warnings[-1]
 
 
 def test_another_hub_height_of_the_yield_step_is_carried_on(finished):

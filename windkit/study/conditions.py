@@ -15,6 +15,7 @@ import pandas as pd
 from windkit.study.artifacts import Outcome, Row, load_artifact
 from windkit.study.extreme_winds import ExtremeWinds, extreme_winds, no_extremes
 from windkit.study.folder import Study
+from windkit.study.settings import TurbinePosition
 from windkit.study.site_air import SiteAir, site_air
 from windkit.study.site_turbulence import (
     LEAST_IN_BIN,
@@ -25,14 +26,15 @@ from windkit.study.site_turbulence import (
 )
 from windkit.study.verdict import (
     CAUTION,
-    EVERY_CLASS,
     FIFTY_YEAR_WIND,
     INSIDE,
     MACHINE,
+    NEAR,
     NOT_ASSESSED,
     OUTSIDE,
-    UNKNOWN,
+    TURBULENCE,
     SiteFigures,
+    about_the_machine,
     verdict_table,
 )
 
@@ -109,11 +111,12 @@ def assess_conditions(study: Study) -> Conditions:
         hub_height=energy.number("hub.height_m"),
     )
     if air.lowest_c is None:
-        why_not["temperature"] = "no temperature at the mast or from the reference"
-    factor = max(place.speed_factor for place in settings.layout)
+        why_not["temperature"] = air.why_not
+    windiest = max(settings.layout, key=lambda place: place.speed_factor)
+    factor = windiest.speed_factor
     figures = _figures(energy, turbulence, extremes, air, factor, why_not)
     table = verdict_table(figures, settings.turbine)
-    rows = _rows(turbulence, extremes, air, table, factor)
+    rows = _rows(turbulence, extremes, air, table, windiest)
     tables = {
         "verdict": table,
         "temperature": air.table,
@@ -131,6 +134,7 @@ def assess_conditions(study: Study) -> Conditions:
             "extreme_levels": extremes.levels,
         }
     warnings = list(extremes.warnings) if extremes else list(filter(None, [why_not["extremes"]]))
+    warnings += [*air.warnings, *_warnings(table)]
     return Conditions(
         turbulence=turbulence or NO_TURBULENCE,
         extremes=extremes or no_extremes(),
@@ -138,7 +142,11 @@ def assess_conditions(study: Study) -> Conditions:
         air_monthly=energy.tables["air_monthly"],
         verdict=table,
         outcome=Outcome(
-            "conditions", rows, tables, _said(turbulence, extremes, air, table, why_not), warnings
+            "conditions",
+            rows,
+            tables,
+            _said(turbulence, extremes, air, table, why_not, windiest),
+            warnings,
         ),
     )
 
@@ -180,19 +188,24 @@ def _rows(
     extremes: ExtremeWinds | None,
     air: SiteAir,
     table: pd.DataFrame,
-    factor: float,
+    windiest: TurbinePosition,
 ) -> list[Row]:
     rows: list[Row] = []
+    factor = windiest.speed_factor
     if extremes is not None:
         rows += [
-            Row("conditions.v50_m_s", "Ten-minute wind of 50 years at the hub", extremes.v50,
-                "m/s", extremes.basis),
+            Row("conditions.v50_m_s", "Ten-minute wind of 50 years at the hub, mast's place",
+                extremes.v50, "m/s", extremes.basis),
+            Row("conditions.v50_windiest_m_s",
+                f"Ten-minute wind of 50 years at the hub, windiest turbine ({windiest.name})",
+                factor * extremes.v50, "m/s",
+                f"that of the mast's place times {factor:g}; the verdict uses it"),
             Row("conditions.v50_standard_error_m_s", "its standard error",
                 extremes.v50_standard_error, "m/s", "scatter of the maxima only"),
-            Row("conditions.v1_m_s", "Ten-minute wind of one year at the hub", extremes.v1, "m/s",
-                "same fit, the level passed once a year on average"),
-            Row("conditions.gust_50_m_s", "3 s gust of 50 years at the hub", extremes.gust_50,
-                "m/s", extremes.gust_basis),
+            Row("conditions.v1_m_s", "Ten-minute wind of one year at the hub, mast's place",
+                extremes.v1, "m/s", "same fit, the level passed once a year on average"),
+            Row("conditions.gust_50_m_s", "3 s gust of 50 years at the hub, mast's place",
+                extremes.gust_50, "m/s", extremes.gust_basis),
             Row("conditions.v50_from_weibull_m_s", "50-year wind from the Weibull tail",
                 extremes.from_weibull, "m/s", "Bergström 1992, a check and no design value"),
             Row("conditions.highest_speed_factor", "Speed factor of the windiest turbine", factor,
@@ -210,16 +223,22 @@ def _rows(
         rows.append(
             Row("conditions.turbulence_class", "Mildest class above the ambient turbulence",
                 turbulence.mildest or "none", "",
-                f"IEC 61400-1, bins from {turbulence.judged[0]:.1f} to {turbulence.judged[1]:.0f} "
-                f"m/s with {LEAST_IN_BIN} intervals or more")
+                f"IEC 61400-1, bins from {turbulence.bins_judged[0]:.0f} to "
+                f"{turbulence.bins_judged[1]:.0f} m/s with {LEAST_IN_BIN} intervals or more")
         )  # fmt: skip
     rows += air.rows
-    machine = _about_the_machine(table)
-    for word, key in ((INSIDE, "inside"), (OUTSIDE, "outside"), (NOT_ASSESSED, "not_assessed")):
+    machine = about_the_machine(table)
+    for word, key in (
+        (INSIDE, "inside"),
+        (NEAR, "near_limit"),
+        (OUTSIDE, "outside"),
+        (NOT_ASSESSED, "not_assessed"),
+    ):
         rows.append(
             Row(f"conditions.verdict.{key}", f"Conditions {word}, against the machine's own limits",
                 int((machine["verdict"] == word).sum()), "1",
-                "verdict table; a certified design assessment decides")
+                f"of {len(machine)} in the table of conditions; a certified design assessment "
+                "decides")
         )  # fmt: skip
     return rows
 
@@ -230,6 +249,7 @@ def _said(
     air: SiteAir,
     table: pd.DataFrame,
     why_not: dict[str, str],
+    windiest: TurbinePosition,
 ) -> dict[str, str]:
     said = {
         "turbulence": _sentence(why_not.get("turbulence", "")),
@@ -239,11 +259,11 @@ def _said(
     if turbulence is not None:
         name, distance = turbulence.nearest_neighbour
         said["turbulence"] = (
-            f"From {turbulence.judged[0]:.1f} to {turbulence.judged[1]:.0f} m/s the 90 % values "
+            _range_judged(turbulence)
             + (
                 f"stay below the line of class {turbulence.mildest}."
                 if turbulence.mildest
-                else "pass the line of the highest class."
+                else "are not below the line of any class."
             )
             + f" In the wind of {STRONG_WIND:g} m/s and more the mean intensity is "
             + (f"{turbulence.strong:.1%}." if turbulence.strong else "not known.")
@@ -257,28 +277,81 @@ def _said(
     if extremes is not None:
         fits = extremes.fits["fifty_year_m_s"]
         said["extremes"] = (
-            f"The ten-minute wind of 50 years is {extremes.v50:.1f} m/s with a standard error of "
-            f"{extremes.v50_standard_error:.1f}; the fits lie between {fits.min():.1f} and "
-            f"{fits.max():.1f}, and the Weibull tail says {extremes.from_weibull:.1f}. The 3 s "
-            f"gust is {extremes.gust_50:.1f} m/s."
+            f"At the mast's place the ten-minute wind of 50 years is {extremes.v50:.1f} m/s with "
+            f"a standard error of {extremes.v50_standard_error:.1f}; the fits lie between "
+            f"{fits.min():.1f} and {fits.max():.1f}, and the Weibull tail says {extremes.from_weibull:.1f}. The 3 s "
+            f"gust is {extremes.gust_50:.1f} m/s. At the windiest turbine, {windiest.name}, the "
+            f"wind of 50 years is {windiest.speed_factor * extremes.v50:.1f} m/s, and "
+            "the verdict uses that."
         )
-    machine = _about_the_machine(table)
-    outside = machine.loc[machine["verdict"] == OUTSIDE, "condition"].tolist()
-    open_ones = machine.loc[machine["verdict"] == NOT_ASSESSED, "condition"].tolist()
-    without = int((table["group"] == UNKNOWN).sum())
-    said["verdict"] = (
-        f"Of {len(machine)} conditions held against the machine's own limits, "
-        f"{int((machine['verdict'] == INSIDE).sum())} are inside"
-        + (f"; outside: {', '.join(outside)}" if outside else ", none is outside")
-        + (f"; not assessed: {', '.join(open_ones)}" if open_ones else "")
-        + f". {without} more have no data in this study. {CAUTION}"
-    )
+    said["verdict"] = f"{_counted(table)} {CAUTION}"
     return said
 
 
-def _about_the_machine(table: pd.DataFrame) -> pd.DataFrame:
-    """Rows that speak of the machine: its own limits, and those that all classes share."""
-    return table[table["against"].isin([MACHINE, EVERY_CLASS]) & (table["group"] != UNKNOWN)]
+def _range_judged(turbulence: SiteTurbulence) -> str:
+    first, last = turbulence.bins_judged
+    to = turbulence.judged[1]
+    if not np.isfinite(first):
+        return "No speed bin has enough intervals to be judged; the 90 % values "
+    return (
+        f"From {first:.0f} to {last:.0f} m/s"
+        + (
+            f", the last bin with {LEAST_IN_BIN} intervals (nothing is known from there to "
+            f"{to:.0f} m/s),"
+            if last < to
+            else ""
+        )
+        + " the 90 % values "
+    )
+
+
+def _counted(table: pd.DataFrame) -> str:
+    """How many conditions of each verdict, and which pass the line of a class."""
+    machine = about_the_machine(table)
+    told = [f"Of the {len(machine)} conditions in the table of conditions"]
+    for word in (INSIDE, NEAR, OUTSIDE, NOT_ASSESSED):
+        names = machine.loc[machine["verdict"] == word, "condition"].tolist()
+        text = f"{len(names)} {'is' if len(names) == 1 else 'are'} {word}"
+        told.append(f"{text} ({', '.join(names)})" if names and word != INSIDE else text)
+    others = table[(table["against"] != MACHINE) & (table["verdict"] == OUTSIDE)]
+    others = others[
+        ~others["condition"].isin(machine.loc[machine["against"] != MACHINE, "condition"])
+    ]
+    passed = [
+        f"{condition} ({', '.join(part['against'])})"
+        for condition, part in others.groupby("condition", sort=False)
+    ]
+    return f"{told[0]}, {'; '.join(told[1:])}. " + (
+        f"Outside against a class: {'; '.join(passed)}." if passed else "None is outside a class."
+    )
+
+
+def _warnings(table: pd.DataFrame) -> list[str]:
+    """A warning for each limit of the machine that is passed, one for all not assessed."""
+    machine = about_the_machine(table)
+    warnings = []
+    for row in machine[machine["verdict"] == OUTSIDE].itertuples():
+        site, limit = (_amount(value, row.unit, row.group) for value in (row.site, row.limit))
+        warnings.append(
+            f"Outside: {row.condition} is {site}, and the limit of {row.against} is {limit}"
+            + (f" ({row.note})" if row.note else "")
+            + "."
+        )
+    unknown = machine.loc[machine["verdict"] == NOT_ASSESSED, "condition"].tolist()
+    if unknown:
+        warnings.append(
+            f"{len(unknown)} of {len(machine)} conditions are not assessed: {'; '.join(unknown)}."
+        )
+    return warnings
+
+
+def _amount(value: object, unit: object, group: object) -> str:
+    number = float(str(value))
+    if unit == "1":
+        return f"{number:.1%}" if group == TURBULENCE else f"{number:.3f}"
+    if unit == "degC":
+        return f"{number:.1f} °C"
+    return f"{number:.3f} kg/m³" if unit == "kg/m3" else f"{number:.1f} m/s"
 
 
 def _sentence(text: str) -> str:

@@ -222,7 +222,7 @@ def _uncertainty(
     rule_text = (
         f"an exponent in doubt by {doubt:g} from {main_height:g} to {hub:g} m makes {rule:.2%}"
         + (" (our choice, the exponent being assumed)" if assumed
-           else " (Newman and Klein 2014, from memory)")
+           else " (Newman and Klein 2014, not verified against the printed paper)")
     )  # fmt: skip
     if left_out is None:
         return rule, f"{rule_text}; fewer than three heights, so the mast cannot test itself"

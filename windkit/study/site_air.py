@@ -7,7 +7,7 @@ not a measurement of ice. Density is in `hub_air`.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 import pandas as pd
@@ -18,7 +18,7 @@ from windkit.kernels.constants import ZERO_CELSIUS
 from windkit.study.artifacts import Row
 from windkit.study.settings import Settings
 
-__all__ = ["COLD_LIMIT_C", "SiteAir", "site_air"]
+__all__ = ["COLD_LIMIT_C", "SiteAir", "months_covered", "site_air"]
 
 Array = NDArray[np.float64]
 
@@ -29,6 +29,10 @@ _ICING_BELOW_C, _ICING_HUMIDITY = 0.0, 0.95
 #: Whole degrees of the temperature table, both ends open [degC]: the form of IEC 61400-15-1.
 _LOWEST_BIN, _HIGHEST_BIN = -40, 50
 _HOURS_PER_YEAR = 8766.0
+#: Share of its hours from which a calendar month counts [1], our choice.
+_HALF_A_MONTH = 0.5
+_MONTHS = 12
+_MAST = "mast, campaign"
 
 
 @dataclass(frozen=True)
@@ -43,11 +47,15 @@ class SiteAir:
     frequency : DataFrame
         Share of time by whole degree, one column a source [1].
     lowest_c, highest_c : float or None
-        Lowest and highest hour of all sources [degC].
+        Lowest and highest hour of all sources [degC]; None if no source covers all twelve
+        calendar months.
+    why_not : str
+        Why they are not assessed.
     icing_hours : float or None
         Hours a year, each calendar month weighing the same; None without a humidity sensor.
     rows : list of Row
     said : str
+    warnings : list of str
     """
 
     table: pd.DataFrame
@@ -57,6 +65,8 @@ class SiteAir:
     icing_hours: float | None
     rows: list[Row]
     said: str
+    why_not: str = ""
+    warnings: list[str] = field(default_factory=list)
 
 
 def site_air(
@@ -81,7 +91,7 @@ def site_air(
     if thermometer is not None:
         name, height = thermometer
         kelvin = record[name] - STANDARD_LAPSE_RATE * (hub_height - height)
-        sources["mast, campaign"] = _hourly(kelvin) - ZERO_CELSIUS
+        sources[_MAST] = _hourly(kelvin) - ZERO_CELSIUS
     if len(long_term):
         sources["reference, brought to the mast's level"] = long_term.dropna() - ZERO_CELSIUS
     sources = {name: values for name, values in sources.items() if len(values)}
@@ -91,18 +101,41 @@ def site_air(
             record[thermometer[0]] - STANDARD_LAPSE_RATE * (hub_height - thermometer[1]),
             record[hygrometer[0]],
         )
+    months = {name: int(months_covered(values.index).sum()) for name, values in sources.items()}
+    if icing is not None and months.get(_MAST, 0) < _MONTHS:
+        icing = None  # some months say nothing of a year's ice
     table = pd.DataFrame([_line(name, values) for name, values in sources.items()])
-    lowest = float(table["lowest_c"].min()) if len(table) else None
-    highest = float(table["highest_c"].max()) if len(table) else None
+    most = max(months.values(), default=0)
+    whole_year = most == _MONTHS
+    lowest = float(table["lowest_c"].min()) if whole_year else None
+    highest = float(table["highest_c"].max()) if whole_year else None
+    why_not, warnings = "no temperature at the mast or from the reference", []
+    if len(table) and not whole_year:
+        why_not = f"temperature of {most} of 12 calendar months only"
+        warnings.append(
+            f"Temperature covers {most} of 12 calendar months by half of their hours or more; it "
+            "is not held against any limit, and hours of cold and ice are not scaled to a year. A "
+            "reference with a thermometer would fill the year."
+        )
     return SiteAir(
         table=table,
         frequency=_frequency(sources),
         lowest_c=lowest,
         highest_c=highest,
         icing_hours=icing,
-        rows=_rows(table, icing),
-        said=_said(table, icing),
+        rows=_rows(table, icing, whole_year=whole_year),
+        said=_said(table, icing, hygrometer is not None, whole_year=whole_year),
+        why_not=why_not,
+        warnings=warnings,
     )
+
+
+def months_covered(index: pd.Index) -> NDArray[np.bool_]:
+    """Which of twelve calendar months have half of their hours, from hourly stamps."""
+    assert isinstance(index, pd.DatetimeIndex)
+    days = np.array([31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31])
+    count = np.bincount(index.month.to_numpy() - 1, minlength=_MONTHS)
+    return np.asarray(count >= _HALF_A_MONTH * 24 * days)
 
 
 def _highest(settings: Settings, quantity: str, record: pd.DataFrame) -> tuple[str, float] | None:
@@ -130,6 +163,8 @@ def _line(name: str, celsius: pd.Series) -> dict[str, object]:
     by_day = cold.groupby(index.floor("D")).any()
     assert isinstance(by_day.index, pd.DatetimeIndex)
     days = float(by_day.groupby(by_day.index.month).mean().mean()) * 365.25
+    if not months_covered(index).all():
+        share = days = np.nan  # some months say nothing of a year
     return {
         "source": name,
         "mean_c": float(celsius.groupby(index.month).mean().mean()),
@@ -139,7 +174,7 @@ def _line(name: str, celsius: pd.Series) -> dict[str, object]:
         "highest_c": float(celsius.max()),
         "hours_below_cold_limit_per_year": share * _HOURS_PER_YEAR,
         "days_below_cold_limit_per_year": days,
-        "months": int(index.month.nunique()),
+        "months": int(months_covered(index).sum()),
         "hours": len(celsius),
     }
 
@@ -163,8 +198,8 @@ def _icing_hours(kelvin: pd.Series, humidity: pd.Series) -> float | None:
     return float(ice.groupby(both.index.month).mean().mean()) * _HOURS_PER_YEAR
 
 
-def _rows(table: pd.DataFrame, icing: float | None) -> list[Row]:
-    rows = []
+def _rows(table: pd.DataFrame, icing: float | None, *, whole_year: bool) -> list[Row]:
+    rows: list[Row] = []
     if len(table):
         longest = table.iloc[int(table["hours"].to_numpy().argmax())]
         basis = f"{longest['source']}, {longest['hours']:,.0f} hours, at hub height"
@@ -175,6 +210,9 @@ def _rows(table: pd.DataFrame, icing: float | None) -> list[Row]:
                 "degC", "of all sources in the temperature table"),
             Row("conditions.highest_temperature_c", "Highest hour",
                 float(table["highest_c"].max()), "degC", "of all sources in the temperature table"),
+        ]  # fmt: skip
+    if whole_year:
+        rows += [
             Row("conditions.hours_below_cold_limit", f"Hours a year below {COLD_LIMIT_C:g} °C",
                 float(longest["hours_below_cold_limit_per_year"]), "h/year", basis),
             Row("conditions.days_below_cold_limit",
@@ -190,17 +228,23 @@ def _rows(table: pd.DataFrame, icing: float | None) -> list[Row]:
     return rows
 
 
-def _said(table: pd.DataFrame, icing: float | None) -> str:
+def _said(table: pd.DataFrame, icing: float | None, humidity: bool, *, whole_year: bool) -> str:
     if table.empty:
         return "Temperature is not assessed: neither the mast nor the reference has it."
     longest = table.iloc[int(table["hours"].to_numpy().argmax())]
     text = (
         f"The mean temperature at the hub is {longest['mean_c']:.1f} °C; hours lie between "
-        f"{table['lowest_c'].min():.1f} and {table['highest_c'].max():.1f} °C. A year has "
-        f"{longest['hours_below_cold_limit_per_year']:.1f} hours below {COLD_LIMIT_C:g} °C."
+        f"{table['lowest_c'].min():.1f} and {table['highest_c'].max():.1f} °C. "
+        + (
+            f"A year has {longest['hours_below_cold_limit_per_year']:.1f} hours below "
+            f"{COLD_LIMIT_C:g} °C."
+            if whole_year
+            else "That is not a whole year, so nothing is said of a year's cold hours."
+        )
     )
     return text + (
         f" Ice can grow in about {icing:,.0f} hours a year."
         if icing is not None
-        else " Icing hours are not assessed, since humidity is not measured."
+        else " Icing hours are not assessed, since "
+        + ("the mast has no whole year." if humidity else "humidity is not measured.")
     )

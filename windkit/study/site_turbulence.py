@@ -75,6 +75,13 @@ class SiteTurbulence:
     strong: float | None
     nearest_neighbour: tuple[str, float]
 
+    @property
+    def bins_judged(self) -> tuple[float, float]:
+        """First and last bin that has enough intervals in that range [m/s], NaN without one."""
+        V = self.by_speed["wind_speed_m_s"]
+        inside = V[V.between(*self.judged)]
+        return (float(inside.min()), float(inside.max())) if len(inside) else (np.nan, np.nan)
+
 
 NO_TURBULENCE = SiteTurbulence(
     by_speed=pd.DataFrame(

@@ -1,8 +1,8 @@
 """The verdict table: each figure of the site against each class and the machine's own limits.
 
-Three words only: inside, outside, not assessed. The limits are those of `kernels.design_classes`
-and what `study.toml` says the maker declares. No verdict here lets a machine be built: a certified
-design assessment by its maker and a licensed engineer decides.
+Four words only: inside, near the limit, outside, not assessed. The limits are those of
+`kernels.design_classes` and what `study.toml` says the maker declares. No verdict here
+lets a machine be built: a certified design assessment by its maker and a licensed engineer decides.
 """
 
 from __future__ import annotations
@@ -36,19 +36,21 @@ __all__ = [
     "FIFTY_YEAR_WIND",
     "INSIDE",
     "MACHINE",
+    "NEAR",
     "NOT_ASSESSED",
     "OUTSIDE",
     "TURBULENCE",
     "UNKNOWN",
     "WIND",
     "SiteFigures",
+    "about_the_machine",
     "verdict_matrix",
     "verdict_table",
 ]
 
 Array = NDArray[np.float64]
 
-INSIDE, OUTSIDE, NOT_ASSESSED = "inside", "outside", "not assessed"
+INSIDE, NEAR, OUTSIDE, NOT_ASSESSED = "inside", "near the limit", "outside", "not assessed"
 CAUTION = (
     "These words compare figures with limits. Whether this machine may stand here is decided by a "
     "certified design assessment of its maker and by licensed engineers, who look at loads too."
@@ -67,7 +69,12 @@ _NEVER_ASSESSED = (
     "extreme change of direction and shear",
     "ice loads, lightning, earthquakes, salt and dust",
 )
-FIFTY_YEAR_WIND = "ten-minute wind of 50 years"
+#: Share of a limit within which an inside figure is called near it [1], our choice.
+_NEAR_SHARE = 0.01
+#: What a limit that nobody here has held against the printed standard carries as its note.
+_UNVERIFIED = "limit not verified against the standard's text"
+FIFTY_YEAR_WIND = "ten-minute wind of 50 years, windiest turbine"
+_SHEAR_EXPONENT, _LOWEST_TEMPERATURE = "shear exponent", "lowest temperature"
 MACHINE, EVERY_CLASS = "the machine", "every class"
 #: Groups of the table, in its order.
 WIND, TURBULENCE, AIR, UNKNOWN = "wind", "turbulence", "profile and air", "without data"
@@ -115,8 +122,8 @@ def verdict_table(figures: SiteFigures, turbine: TurbineSettings) -> pd.DataFram
     Returns
     -------
     DataFrame
-        Columns group, condition, against, site, limit, unit, verdict, note. Site and limit are
-        NaN where there is none.
+        Columns group, condition, against, site, limit, margin, unit, verdict, note. The margin is
+        what is left up to the limit, negative beyond it; NaN where there is none.
     """
     groups = {
         WIND: _speeds(figures, turbine),
@@ -131,7 +138,19 @@ def verdict_table(figures: SiteFigures, turbine: TurbineSettings) -> pd.DataFram
     tables = [pd.DataFrame(rows, columns=columns) for rows in groups.values()]
     for table, group in zip(tables, groups, strict=True):
         table.insert(0, "group", group)
-    return pd.concat(tables, ignore_index=True)
+    table = pd.concat(tables, ignore_index=True)
+    left = table["limit"] - table["site"]
+    left = left.where(table["condition"] != _LOWEST_TEMPERATURE, -left)
+    # The shear exponent has a lower limit too.
+    shear = table["condition"] == _SHEAR_EXPONENT
+    left = left.where(~shear, np.minimum(left, table["site"] - _SHEAR[0]))
+    table.insert(list(table.columns).index("limit") + 1, "margin", left)
+    return table
+
+
+def about_the_machine(table: pd.DataFrame) -> pd.DataFrame:
+    """Each condition once: against the machine, or what all classes share; the ones counted."""
+    return table[table["against"].isin([MACHINE, EVERY_CLASS])].reset_index(drop=True)
 
 
 def verdict_matrix(table: pd.DataFrame, group: str) -> pd.DataFrame:
@@ -200,8 +219,20 @@ def _held(
     if site is None or limit is None:
         note = why_not if site is None else "not declared in [turbine]"
         return condition, against, value, bound, unit, NOT_ASSESSED, note
-    note = "within one standard error of the limit" if abs(site - limit) < error else ""
-    return condition, against, value, bound, unit, INSIDE if site <= limit else OUTSIDE, note
+    word, note = _word(bound - value, bound, error)
+    return condition, against, value, bound, unit, word, note
+
+
+def _word(margin: float, limit: float, error: float = 0.0) -> tuple[str, str]:
+    """Verdict and note; beyond the limit is outside, however little."""
+    note = ""
+    if abs(margin) < error:
+        note = "within one standard error of the limit"
+    elif abs(margin) < _NEAR_SHARE * abs(limit):
+        note = f"within {_NEAR_SHARE:.0%} of the limit"
+    if margin < 0:
+        return OUTSIDE, note
+    return (NEAR if note else INSIDE), note
 
 
 def _speeds(figures: SiteFigures, turbine: TurbineSettings) -> list[Line]:
@@ -213,8 +244,14 @@ def _speeds(figures: SiteFigures, turbine: TurbineSettings) -> list[Line]:
     conditions = (
         ("yearly mean speed at the windiest hub", figures.mean_speed, 0, 1.0, 0.0),
         (FIFTY_YEAR_WIND, figures.v50, 1, 1.0, error),
-        ("3 s gust of 50 years", figures.gust_50, 1, GUST_RATIO, error * GUST_RATIO),
-        ("ten-minute wind of one year", figures.v1, 1, ONE_YEAR_RATIO, 0.0),
+        (
+            "3 s gust of 50 years, windiest turbine",
+            figures.gust_50,
+            1,
+            GUST_RATIO,
+            error * GUST_RATIO,
+        ),
+        ("ten-minute wind of one year, windiest turbine", figures.v1, 1, ONE_YEAR_RATIO, 0.0),
     )
     for name, site, place, ratio, doubt in conditions:
         for against, pair in limits.items():
@@ -255,12 +292,11 @@ def _turbulence(figures: SiteFigures, turbine: TurbineSettings) -> list[Line]:
                 else normal_turbulence(V, reference)
             ) / V
             at = int(np.nanargmax(site - line))
-            condition, _, value, bound, unit, verdict, _ = _held(
+            condition, _, value, bound, unit, verdict, near = _held(
                 name, against, float(site[at]), float(line[at]), "1", ""
             )
-            rows.append(
-                (condition, against, value, bound, unit, verdict, f"nearest at {V[at]:.0f} m/s")
-            )
+            note = "; ".join(filter(None, [f"nearest at {V[at]:.0f} m/s", near]))
+            rows.append((condition, against, value, bound, unit, verdict, note))
     return rows
 
 
@@ -271,11 +307,13 @@ def _worst(site: Array | None) -> float | None:
 def _standing(figures: SiteFigures, turbine: TurbineSettings) -> list[Line]:
     """Shear, air and temperature: the same for every class."""
     low, high = _SHEAR
-    inside = low <= figures.shear_exponent <= high
+    exponent = figures.shear_exponent
+    word, near = _word(min(high - exponent, exponent - low), high)
+    between = f"between {low:g} and {high:g}; {_UNVERIFIED}"
     rows: list[Line] = [
         (
-            "shear exponent", EVERY_CLASS, figures.shear_exponent, high, "1",
-            INSIDE if inside else OUTSIDE, f"between {low:g} and {high:g} (from memory)",
+            _SHEAR_EXPONENT, EVERY_CLASS, exponent, high, "1", word,
+            "; ".join(filter(None, [near, between])),
         ),
         _held(
             "mean air density", EVERY_CLASS, figures.air_density, STANDARD_AIR_DENSITY,
@@ -284,14 +322,14 @@ def _standing(figures: SiteFigures, turbine: TurbineSettings) -> list[Line]:
     ]  # fmt: skip
     why = figures.why_not.get("temperature", "")
     for name, site, normal, extreme, declared, sign in (
-        ("lowest temperature", figures.lowest_temperature_c, _NORMAL_TEMPERATURE[0],
+        (_LOWEST_TEMPERATURE, figures.lowest_temperature_c, _NORMAL_TEMPERATURE[0],
          _EXTREME_TEMPERATURE[0], turbine.lowest_temperature_c, 1),
         ("highest temperature", figures.highest_temperature_c, _NORMAL_TEMPERATURE[1],
          _EXTREME_TEMPERATURE[1], turbine.highest_temperature_c, -1),
     ):  # fmt: skip
         for against, limit, note in (
-            ("normal range of the standard", normal, "from memory"),
-            ("extreme range of the standard", extreme, "from memory"),
+            ("normal range of the standard", normal, _UNVERIFIED),
+            ("extreme range of the standard", extreme, _UNVERIFIED),
             (MACHINE, declared, ""),
         ):
             if site is None or limit is None:
@@ -301,6 +339,7 @@ def _standing(figures: SiteFigures, turbine: TurbineSettings) -> list[Line]:
                      np.nan if limit is None else limit, "degC", NOT_ASSESSED, reason)
                 )  # fmt: skip
                 continue
-            word = INSIDE if sign * (site - limit) >= 0 else OUTSIDE
-            rows.append((name, against, site, limit, "degC", word, note))
+            word, near = _word(sign * (site - limit), limit)
+            told = "; ".join(filter(None, [near, note]))
+            rows.append((name, against, site, limit, "degC", word, told))
     return rows

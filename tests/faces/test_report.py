@@ -16,7 +16,7 @@ from nbformat import v4
 from windkit.faces import views
 from windkit.faces.chapter import NOTES_TEMPLATE, render_chapter
 from windkit.faces.frozen import PANEL_STATE, PANEL_VIEW
-from windkit.faces.report import STATUS, Cover, versions_in_use, write_report
+from windkit.faces.report import STATUS, Cover, Statements, versions_in_use, write_report
 from windkit.faces.tables import Table, exceedance_table_view
 
 # The smallest PNG: one pixel.
@@ -168,7 +168,7 @@ def test_contents_lead_to_every_chapter_and_section(html):
 
 def test_each_workbook_is_a_chapter(html):
     assert re.findall(r"<h2>(?:<span[^>]*>\w</span>)?([^<]+)</h2>", html) == [
-        "Results", "Contents", "Site screening", "Measured data", "Limits, inputs and versions",
+        "Results", "Contents", "Site screening", "Measured data", "Statements, inputs and versions",
     ]  # fmt: skip
 
 
@@ -213,6 +213,32 @@ def test_appendix_names_inputs_versions_and_limits(html):
     appendix = html[html.index('id="appendix"') :]
     for text in ("ab" * 32, "study.toml", "9.9", "not a guarantee", "licensed practice"):
         assert text in appendix
+
+
+def _stated(page):
+    part = page[page.index('id="statements"') :]
+    return dict(re.findall(r"<h4>([^<]*)</h4>(.*?)(?=<h4>|<h3>|</section>)", part, re.S))
+
+
+def test_what_nobody_stated_is_said_to_be_not_stated(html):
+    said = _stated(html)
+    for heading in ("Independence", "Standards followed", "Deviations"):
+        assert said[heading].strip() == "<p>not stated</p>"
+    assert "were not verified" in said["Inputs not verified"]
+    assert "not a guarantee" in said["Limits of use"]
+    assert "All times are UTC" in said["Time"]
+    assert "P50 is not corrected for the bias" in said["Bias"]
+
+
+def test_statements_stand_in_the_appendix_as_they_were_written(tmp_path):
+    stated = Statements("No share in <it>.", ["A standard, edition 2"], [("r", "w", "", "C. Gill")])
+    said = _stated(_write(tmp_path, statements=stated).read_text(encoding="utf-8"))
+    assert "No share in &lt;it&gt;." in said["Independence"]
+    assert "<li>A standard, edition 2</li>" in said["Standards followed"]
+    cells = [re.sub("<[^>]*>", "", cell) for cell in re.findall("<td.*?</td>", said["Deviations"])]
+    assert cells == ["r", "w", "not stated", "C. Gill"]
+    none = _stated(_write(tmp_path, statements=Statements("", [], [])).read_text(encoding="utf-8"))
+    assert none["Standards followed"].strip() == none["Deviations"].strip() == "<p>none</p>"
 
 
 def test_the_same_study_elsewhere_gives_the_same_bytes(tmp_path):

@@ -8,7 +8,7 @@ import pandas as pd
 import pytest
 
 from windkit.faces import views
-from windkit.faces.handover import _cover, _departure_sentences
+from windkit.faces.handover import _cover, _departure_sentences, _statements
 from windkit.study.folder import open_study
 from windkit.study.shipped import make_study
 
@@ -102,3 +102,19 @@ def test_the_cover_shows_what_was_run_instead_of_the_study_file(folder):
     assert departed.mind[0] == (
         "Step yield was run with turbine.hub_height_m = 120 instead of the value in study.toml."
     )
+
+
+def test_the_cover_and_the_statements_say_what_the_study_states_and_what_it_does_not(folder):
+    study = open_study(folder)
+    identity = study.settings.study
+    facts = _cover(study, {}, {}).facts
+    assert facts["Verifier"] == identity.verifier != ""
+    assert facts["Data until"] == "2023-12-31"
+    assert facts["Approver"] == "not stated"
+    stated = _statements(study)
+    assert stated.independence == identity.independence != ""
+    assert stated.standards is None
+    assert stated.deviations is not None
+    assert stated.deviations[0][3] == ""
+    none = open_study(folder, {"study.standards_followed": [], "study.deviations": []})
+    assert _statements(none).standards == _statements(none).deviations == []

@@ -32,6 +32,24 @@ def test_what_is_written_is_what_is_read():
     assert settings.study.issue_date.isoformat() == "2026-11-30"
 
 
+def test_what_the_study_states_is_optional_and_a_deviation_is_whole():
+    stated = parse_settings(tomllib.loads(SETTINGS)).study
+    assert (stated.verifier, stated.data_date, stated.deviations) == ("", None, [])
+    assert not {"standards_followed", "deviations"} & stated.model_fields_set
+    date = "issue_date = 2026-11-30"
+    table = '\n[[study.deviations]]\nrule = "r"\nwhat = "w"\naccepted_by = "C. Gill"\n'
+    more = f'{date}\nverifier = "O. Marsh"\ndata_date = 2026-10-31\nstandards_followed = []{table}'
+    stated = parse_settings(tomllib.loads(SETTINGS.replace(date, more, 1))).study
+    assert stated.verifier == "O. Marsh"
+    assert stated.data_date is not None
+    assert stated.deviations[0].accepted_by == "C. Gill"
+    assert "standards_followed" in stated.model_fields_set
+    lacking = table.replace('what = "w"', 'effct = "none"')
+    told = refused(date, date + lacking)
+    assert "study.deviations[1].what" in told
+    assert "effect" in told
+
+
 def test_the_demo_study_keeps_every_rule():
     demo = Path(__file__).parents[2] / "data_demo" / "study.toml"
     assert parse_settings(read_settings(demo)).site.country == "Merrowland"

@@ -12,7 +12,7 @@ from html import escape
 from pathlib import Path
 from typing import Any
 
-from windkit.faces.report import Cover, versions_in_use, write_report
+from windkit.faces.report import NOT_STATED, Cover, Statements, versions_in_use, write_report
 from windkit.faces.spreadsheet import write_tables
 from windkit.faces.tables import results_table
 from windkit.faces.views import exceedance_view, setting_text
@@ -122,6 +122,7 @@ def build_handover(study: Study) -> Handover:
             summary_html=_summary(artifacts),
             inputs=_inputs(artifacts),
             versions=versions_in_use(),
+            statements=_statements(study),
             study_folder=study.folder,
         )
     except ValueError as error:
@@ -142,7 +143,15 @@ def _cover(
     # The energy on the cover is that of the hub height it was computed for.
     hub_height = departures.get("yield", {}).get("turbine.hub_height_m", turbine.hub_height_m)
     warnings = [warning for artifact in artifacts.values() for warning in artifact.warnings]
-    facts = {
+    stated = {
+        "Verifier": identity.verifier,
+        "Approver": identity.approver,
+        "Contract": identity.contract,
+        "Confidentiality": identity.confidentiality,
+        "Coordinate system": identity.coordinate_system,
+        "Data until": identity.data_date.isoformat() if identity.data_date else "",
+    }
+    facts = {name: text or NOT_STATED for name, text in stated.items()} | {
         "Country": site.country,
         "Mast": f"{settings.mast.name}, {_angle(site.latitude_deg, 'N', 'S')}, "
         f"{_angle(site.longitude_deg, 'E', 'W')}, {number_text(site.elevation_m)} m above the sea",
@@ -158,6 +167,20 @@ def _cover(
         reason_for_revision=identity.reason_for_revision,
         facts={name: text for name, text in facts.items() if text},
         mind=[as_printed(said) for said in [*_departure_sentences(departures), *warnings]],
+    )
+
+
+def _statements(study: Study) -> Statements:
+    """What the study states; a key that is left out states nothing."""
+    identity = study.settings.study
+    written = identity.model_fields_set
+    deviations = [
+        (each.rule, each.what, each.effect, each.accepted_by) for each in identity.deviations
+    ]
+    return Statements(
+        independence=identity.independence,
+        standards=identity.standards_followed if "standards_followed" in written else None,
+        deviations=deviations if "deviations" in written else None,
     )
 
 

@@ -22,7 +22,15 @@ from windkit.faces.chapter import Chapter, render_chapter
 from windkit.faces.offline import CONTENT_POLICY, check_document, check_fragment, machine_path
 from windkit.faces.tables import TABLE_STYLE, Table
 
-__all__ = ["LIMITS", "STATUS", "Cover", "versions_in_use", "write_report"]
+__all__ = [
+    "LIMITS",
+    "NOT_STATED",
+    "STATUS",
+    "Cover",
+    "Statements",
+    "versions_in_use",
+    "write_report",
+]
 
 #: What the cover says about the answer.
 STATUS = "Estimate, not a guarantee"
@@ -34,6 +42,25 @@ LIMITS = (
     "The report replaces neither structural design nor permits, grid studies or noise and "
     "ecological assessments; local codes and licensed practice decide there. Work at height on "
     "masts and turbines and electrical work belong to trained people.",
+)
+
+#: What stands where the study says nothing.
+NOT_STATED = "not stated"
+
+#: What is said of every study, by its heading.
+_SAID_OF_ALL = (
+    (
+        "Inputs not verified",
+        "Figures of the client and of the turbine's maker are used as given: layout, power curve, "
+        "declared limits, losses and uncertainties whose basis names one of them. They were not "
+        "verified.",
+    ),
+    ("Time", "All times are UTC."),
+    (
+        "Bias",
+        "P50 is not corrected for the bias that published reviews found: realised energy several "
+        "per cent below pre-construction P50.",
+    ),
 )
 
 #: Libraries whose version can move a number or a picture.
@@ -83,6 +110,25 @@ class Cover:
     mind: Sequence[str] = ()
 
 
+@dataclass(frozen=True)
+class Statements:
+    """What author and firm state; None and an empty text print as not stated.
+
+    Attributes
+    ----------
+    independence : str
+        What ties them to the project, or that nothing does.
+    standards : sequence of str, optional
+        Standards followed; an empty one states that there are none.
+    deviations : sequence of (rule, what, effect, accepted by), optional
+        Departures from them; an empty one states that there are none.
+    """
+
+    independence: str = ""
+    standards: Sequence[str] | None = None
+    deviations: Sequence[tuple[str, str, str, str]] | None = None
+
+
 def write_report(
     path: Path | str,
     *,
@@ -92,6 +138,7 @@ def write_report(
     summary_html: str = "",
     inputs: Mapping[str, str] | None = None,
     versions: Mapping[str, str] | None = None,
+    statements: Statements | None = None,
     study_folder: Path | str | None = None,
 ) -> Path:
     """Write the report of a study as one file.
@@ -112,6 +159,8 @@ def write_report(
         SHA-256 of each input file, by its name in the study folder.
     versions : mapping of name to str, optional
         Versions the study ran with, see `versions_in_use`.
+    statements : Statements, optional
+        What stands under that heading in the appendix.
     study_folder : Path or str, optional
         Paths inside it are shown relative to it.
 
@@ -136,7 +185,8 @@ def write_report(
     summary = summary_html.replace(TABLE_STYLE, "")
     if problem := check_fragment(summary):
         raise ValueError(f"the summary would not stand on its own: {problem}")
-    page = _page(front, chapters, headline, summary, inputs or {}, versions or {})
+    appendix = _appendix(statements or Statements(), inputs or {}, versions or {})
+    page = _page(front, chapters, headline, summary, appendix)
     if found := machine_path(page):
         raise ValueError(
             f"the report shows the path {found!r} of the machine it ran on; write paths relative "
@@ -162,8 +212,7 @@ def _page(
     chapters: Sequence[Chapter],
     headline: Table | None,
     summary: str,
-    inputs: Mapping[str, str],
-    versions: Mapping[str, str],
+    appendix: str,
 ) -> str:
     style = resources.files("windkit.faces").joinpath("report.css").read_text(encoding="utf-8")
     table_style = TABLE_STYLE.removeprefix("<style>").removesuffix("</style>")
@@ -182,7 +231,7 @@ def _page(
         f'<section class="summary" id="summary">\n{summary}\n</section>' if summary else "",
         _contents(chapters, bool(summary)),
         *(_chapter(number, chapter) for number, chapter in enumerate(chapters, start=1)),
-        _appendix(inputs, versions),
+        appendix,
         "</body>",
         "</html>",
     ]
@@ -231,7 +280,7 @@ def _contents(chapters: Sequence[Chapter], has_summary: bool) -> str:
         )
         below = f"<ol>{below}</ol>" if below else ""
         lines.append(line(chapter.name, str(number), escape(chapter.title), below))
-    lines.append(line("appendix", "A", "Limits, inputs and versions"))
+    lines.append(line("appendix", "A", "Statements, inputs and versions"))
     joined = "\n".join(lines)
     return f'<nav class="contents">\n<h2>Contents</h2>\n<ol>\n{joined}\n</ol>\n</nav>'
 
@@ -244,11 +293,39 @@ def _chapter(number: int, chapter: Chapter) -> str:
     )
 
 
-def _appendix(inputs: Mapping[str, str], versions: Mapping[str, str]) -> str:
-    parts = [
-        "<h3>Limits of use</h3>",
-        *(f'<p class="limits">{escape(text)}</p>' for text in LIMITS),
+def _statements(stated: Statements) -> list[str]:
+    """The statements a lender looks for, each under its heading."""
+
+    def listed(texts: Sequence[str] | None) -> str:
+        if not texts:
+            return f"<p>{NOT_STATED if texts is None else 'none'}</p>"
+        return "<ul>" + "".join(f"<li>{escape(text)}</li>" for text in texts) + "</ul>"
+
+    deviations = listed(None if stated.deviations is None else ())
+    if stated.deviations:
+        heads = ("Rule", "What differs", "Effect", "Accepted by")
+        rows = [
+            dict(zip(heads, (text or NOT_STATED for text in deviation), strict=True))
+            for deviation in stated.deviations
+        ]
+        deviations = Table(rows, formats=dict.fromkeys(heads, str)).to_html()
+    unverified, *others = [
+        f"<h4>{heading}</h4><p>{escape(text)}</p>" for heading, text in _SAID_OF_ALL
     ]
+    return [
+        '<h3 id="statements">Statements</h3>',
+        f"<h4>Independence</h4><p>{escape(stated.independence or NOT_STATED)}</p>",
+        f"<h4>Standards followed</h4>{listed(stated.standards)}",
+        f"<h4>Deviations</h4>{deviations}",
+        unverified,
+        "<h4>Limits of use</h4>",
+        *(f'<p class="limits">{escape(text)}</p>' for text in LIMITS),
+        *others,
+    ]
+
+
+def _appendix(stated: Statements, inputs: Mapping[str, str], versions: Mapping[str, str]) -> str:
+    parts = _statements(stated)
     if inputs:
         parts += [
             "<h3>Input files</h3>",
@@ -261,7 +338,7 @@ def _appendix(inputs: Mapping[str, str], versions: Mapping[str, str]) -> str:
     joined = "\n".join(parts)
     return (
         '<section class="chapter" id="appendix">\n<h2><span class="number">A</span>'
-        f"Limits, inputs and versions</h2>\n{joined}\n</section>"
+        f"Statements, inputs and versions</h2>\n{joined}\n</section>"
     )
 
 
@@ -286,7 +363,7 @@ def _captions(cover: Cover, chapters: Sequence[Chapter]) -> str:
         f"  @bottom-left {{ content: {_css_text(foot)}; {small} }}",
         f'  @bottom-right {{ content: counter(page) " / " counter(pages); {small} }} }}',
     ]
-    for name, title in [*named, ("appendix", "Limits, inputs and versions")]:
+    for name, title in [*named, ("appendix", "Statements, inputs and versions")]:
         lines.append(f"@page {name} {{ @top-right {{ content: {_css_text(title)}; {small} }} }}")
         lines.append(f"#{name} {{ page: {name}; }}")
     return "\n".join(lines) + "\n"

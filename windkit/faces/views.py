@@ -76,12 +76,14 @@ def results(outcome: Outcome, *, without: str = "") -> Table:
 def exceedance_view(outcome: Outcome) -> Table:
     """P50 to P99 by period and what P90 keeps of P50, as the cover shows them."""
     levels = outcome.tables["levels"].set_index("years").drop(columns="standard_uncertainty")
-    plain = exceedance_table_view(levels)
+    plain, names = exceedance_table_view(levels), [str(name) for name in levels.columns]
     rows: list[dict[str, Any]] = [
-        {"Mean of": line[0], **values, "P90/P50": values["P90"] / values["P50"]}
-        for line, values in zip(plain.cells, levels.to_dict("records"), strict=True)
+        {"Mean of": line[0], **dict(zip(names, values, strict=True)), "P90/P50": share}
+        for line, values, share in zip(
+            plain.cells, levels.to_numpy().tolist(), levels["P90"] / levels["P50"], strict=True
+        )
     ]
-    formats: dict[str, Any] = dict.fromkeys(levels.columns, "MWh/year")
+    formats: dict[str, Any] = dict.fromkeys(names, "MWh/year")
     return Table(rows, caption=plain.caption, formats=formats | {"P90/P50": percent_text})
 
 

@@ -34,6 +34,7 @@ __all__ = [
     "SCHEMA_VERSION",
     "SETTINGS_FILE",
     "UNCERTAINTY_GROUPS",
+    "Deviation",
     "LongTermSettings",
     "LossSettings",
     "MeasuredSettings",
@@ -74,8 +75,17 @@ class _Section(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True, strict=True, allow_inf_nan=False)
 
 
+class Deviation(_Section):
+    """Where the study departs from a rule it follows, and who accepted that."""
+
+    rule: str = Field(min_length=1)
+    what: str = Field(min_length=1)
+    effect: str = ""
+    accepted_by: str = ""
+
+
 class StudyIdentity(_Section):
-    """Who asks, who answers, which revision."""
+    """Who asks, who answers, which revision, and what they state."""
 
     title: str = Field(min_length=1)
     client: str = ""
@@ -83,6 +93,17 @@ class StudyIdentity(_Section):
     revision: int = Field(default=0, ge=0)
     reason_for_revision: str = "first issue"
     issue_date: dt.date
+    verifier: str = ""
+    approver: str = ""
+    contract: str = ""
+    confidentiality: str = ""
+    coordinate_system: str = ""
+    # Until when data came in, as opposed to the date of issue.
+    data_date: dt.date | None = None
+    independence: str = ""
+    # An empty list states that there are none; left out, nothing is stated.
+    standards_followed: list[str] = Field(default_factory=list)
+    deviations: list[Deviation] = Field(default_factory=list)
 
 
 class SiteSettings(_Section):

@@ -140,6 +140,7 @@ def test_a_break_is_laid_to_the_station_that_has_it():
     found = compare_references(monthly, level=0.01)
     assert [b.reference for b in found.breaks] == [2]
     assert abs(found.breaks[0].month - 100) <= 2
+    assert found.breaks[0].earliest <= 100 <= found.breaks[0].latest
     assert found.breaks[0].size == pytest.approx(0.12, abs=0.02)
     # Taken out, the earlier stretch stands at the level of the later one.
     np.testing.assert_allclose(found.factors[:90, 2], 1.12, atol=0.02)

@@ -16,7 +16,8 @@ from itertools import pairwise
 import numpy as np
 from numpy.typing import NDArray
 
-from windkit.kernels.breaks import LEAST_SEGMENT, find_breaks
+from windkit.kernels.break_dates import break_range
+from windkit.kernels.breaks import LEAST_SEGMENT, find_breaks, lag_one_autocorrelation
 
 __all__ = ["FoundBreak", "Homogeneity", "compare_references"]
 
@@ -36,12 +37,16 @@ class FoundBreak:
         Its column.
     month : int
         Index of the first month after the break.
+    earliest, latest : int
+        Months between which it lies with a chance of 90 % or more, as `month` is counted.
     size : float
         Mean after over mean before, less one [1].
     """
 
     reference: int
     month: int
+    earliest: int
+    latest: int
     size: float
 
 
@@ -89,8 +94,9 @@ def compare_references(monthly: Array, *, level: float = 0.05, seed: int = 0) ->
     if count < 2 or months < 2 * LEAST_SEGMENT:
         return Homogeneity([], np.ones_like(monthly), attributed=False)
     if count == 2:
-        pair = find_breaks(logarithm[:, 0] - logarithm[:, 1], level=level, seed=seed)
-        both = [FoundBreak(0, b.position, float(np.expm1(b.size))) for b in pair]
+        apart = logarithm[:, 0] - logarithm[:, 1]
+        pair = find_breaks(apart, level=level, seed=seed)
+        both = _dated(0, apart, [b.position for b in pair], [b.size for b in pair])
         return Homogeneity(both, np.ones_like(monthly), attributed=False)
 
     current = logarithm.copy()
@@ -129,11 +135,22 @@ def _settled(logarithm: Array, current: Array, positions: list[set[int]]) -> Hom
         level = [float(np.mean(ratio[start:end])) for start, end in pairwise(edges)]
         for (start, end), stretch in zip(pairwise(edges), level, strict=True):
             factors[start:end, row] = level[-1] - stretch
-        breaks += [
-            FoundBreak(row, edges[k], float(np.expm1(level[k] - level[k - 1])))
-            for k in range(1, len(level))
-        ]
+        breaks += _dated(row, ratio, edges[1:-1], np.diff(level).tolist())
     return Homogeneity(breaks, np.exp(factors), attributed=True)
+
+
+def _dated(row: int, ratio: Array, at: list[int], steps: list[float]) -> list[FoundBreak]:
+    """Breaks of one reference with the ranges of their dates; steps are logarithms."""
+    edges = [0, *at, ratio.size]
+    memory = lag_one_autocorrelation(ratio, at)
+    found = []
+    for before, month, after, step in zip(edges[:-2], at, edges[2:], steps, strict=True):
+        first, last = before, after
+        if after - before > 2 * LEAST_SEGMENT:
+            first, last = (before + k for k in break_range(ratio[before:after], memory))
+        size = float(np.expm1(step))
+        found.append(FoundBreak(row, month, min(first, month), max(last, month), size))
+    return found
 
 
 def _against_others(logarithm: Array, row: int) -> Array:

@@ -42,7 +42,8 @@ class LongTermCorrection:
     references : DataFrame
         One row a reference, best first: verdict, reason, and what they rest on.
     breaks : DataFrame
-        Columns reference, date (first month after it), size [1].
+        Columns reference, date (first month after it), earliest and latest (months between which
+        it lies with a chance of 90 % or more), size [1].
     parts : DataFrame
         One row a part of the uncertainty: standard_uncertainty [1], share [1] of the variance of
         `draws` (NaN for a part that is not in it), how it was found.

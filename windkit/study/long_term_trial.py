@@ -47,7 +47,7 @@ class Trial:
     table : DataFrame
         One row a reference, best first, those set aside last.
     breaks : DataFrame
-        reference, date, size.
+        reference, date, earliest, latest, size.
     homogeneity : Homogeneity
     month_of_day : ndarray of int, shape (d,)
         Row of the monthly table each day belongs to.
@@ -76,10 +76,16 @@ def try_references(inputs: Inputs) -> Trial:
     names = list(inputs.references.columns)
     breaks = pd.DataFrame(
         [
-            {"reference": names[b.reference], "date": months[b.month], "size": b.size}
+            {
+                "reference": names[b.reference],
+                "date": months[b.month],
+                "earliest": months[b.earliest],
+                "latest": months[min(b.latest, len(months) - 1)],
+                "size": b.size,
+            }
             for b in homogeneity.breaks
         ],
-        columns=["reference", "date", "size"],
+        columns=["reference", "date", "earliest", "latest", "size"],
     )
     notes = []
     if len(names) == 1:

@@ -58,10 +58,9 @@ def found_in_words(
         + (
             f"{len(breaks)} break{'s' if len(breaks) > 1 else ''} found: "
             + "; ".join(
-                f"{name}, {date:%B %Y}, {size:+.1%}"
-                for name, date, size in zip(
-                    breaks["reference"], breaks["date"], breaks["size"], strict=True
-                )
+                f"{row.reference}, {row.date:%B %Y} "
+                f"(between {row.earliest:%B %Y} and {row.latest:%B %Y}), {row.size:+.1%}"
+                for row in breaks.itertuples()
             )
             + "."
             if len(breaks)

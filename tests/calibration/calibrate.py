@@ -24,6 +24,10 @@ KINDS: dict[str, tuple[dict, dict]] = {
     "breaks everywhere, 3 references": ({"reference_count": 3}, {}),
     "breaks in references only": ({"site_breaks": False}, {"site_breaks": False}),
     "clean": ({"breaks_per_decade": 0.0, "drift_per_decade": 0.0}, {}),
+    "clean, 3 references, 10 years": (
+        {"breaks_per_decade": 0.0, "drift_per_decade": 0.0, "reference_count": 3, "years": 10},
+        {},
+    ),
     "half a year": ({"campaign_days": 183}, {}),
     "hours with energy": ({"steps_per_day": 24, "years": 10, "reference_count": 3}, {}),
 }

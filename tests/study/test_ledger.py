@@ -17,6 +17,8 @@ from windkit.study.ledger import (
     ledger_of,
     masked_by,
     read_ledger,
+    refuse_rows_outside,
+    values_in,
     write_ledger,
 )
 
@@ -144,3 +146,42 @@ def test_another_separator_is_named(tmp_path: Path, sign: str, word: str, first:
 def test_an_unknown_channel_is_refused(tmp_path: Path):
     with pytest.raises(StudyError, match="names the channel 'c'"):
         apply_ledger(frame(), ledger(tmp_path, "c" + ROW[1:]))
+
+
+@pytest.mark.parametrize(
+    ("rule", "words"),
+    [
+        ("icng", "There is no rule 'icng'.*Write icing"),
+        ("Manual", "Write manual"),
+        ("wind turbine 7", "Write manual if a person found the span"),
+    ],
+)
+def test_a_rule_that_no_check_has_is_refused_with_the_near_name(tmp_path: Path, rule, words):
+    with pytest.raises(StudyError, match="(?i)" + words) as met:
+        ledger(tmp_path, ROW, ROW.replace("manual", rule))
+    assert str(met.value).startswith("ledger.csv, line 3: ")
+
+
+def test_a_span_outside_the_record_is_refused_with_its_line_and_both_periods(tmp_path: Path):
+    index = pd.DatetimeIndex(frame().index)
+    interval = pd.Timedelta("10min")
+    quoted = ROW.replace("wet", '"wet\nand cold"')  # over two lines of the file
+    refuse_rows_outside(index, interval, ledger(tmp_path, quoted))
+    for year in ("2025", "2027"):
+        rows = ledger(tmp_path, quoted, ROW.replace("2026-01-01", f"{year}-01-01"))
+        with pytest.raises(StudyError) as met:
+            refuse_rows_outside(index, interval, rows)
+        said = str(met.value)
+        assert said.startswith("ledger.csv, line 4: ")
+        assert f"from {year}-01-01T00:10:00Z to {year}-01-01T00:30:00Z" in said
+        assert "the record from 2026-01-01T00:00:00Z to 2026-01-01T01:00:00Z" in said
+    # The end is not part of either: a row that begins where the record ends has nothing of it.
+    touching = ROW.replace("00:10:00", "01:00:00").replace("00:30:00", "01:10:00")
+    with pytest.raises(StudyError):
+        refuse_rows_outside(index, interval, ledger(tmp_path, touching))
+
+
+def test_values_are_counted_by_channel_and_over_all(tmp_path: Path):
+    values = frame()
+    values.iloc[1, 0] = np.nan
+    assert values_in(values, ledger(tmp_path, ROW, "*" + ROW[1:])) == [1, 3]

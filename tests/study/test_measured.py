@@ -9,8 +9,10 @@ import pandas as pd
 import pytest
 
 from tests.small_study import edit
+from windkit.study.errors import StudyError
 from windkit.study.folder import open_study
 from windkit.study.measured import Measured, examine_record, load_record
+from windkit.study.running import check_inputs
 
 #: Off, so that a record made for one figure is not judged for its looks.
 NO_CHECKS = "[checks]\nmasking_rules = []\n\n[turbine]"
@@ -173,3 +175,25 @@ def test_the_weibull_fit_finds_the_figures_it_was_drawn_with(small):
     assert found.number("measured.weibull_A_m_s") == pytest.approx(
         7.0, abs=4 * 1.05 * 7 / (2.2 * 8000**0.5)
     )
+
+
+@pytest.mark.parametrize("station", ["mast", "references"])
+@pytest.mark.parametrize(
+    ("minutes", "words"),
+    [
+        ("1440", "interval_min is 1440; stations with intervals above 60 minutes are not supp"),
+        ("25", "interval_min is 25; an hourly mean needs a whole number of intervals"),
+    ],
+)
+def test_intervals_that_the_workbooks_cannot_pair_are_refused_at_load(
+    small, station, minutes, words
+):
+    file = small / "study.toml"
+    head, mark, tail = file.read_text().partition(f"[{station}]")
+    tail = tail.replace("interval_min = 60", f"interval_min = {minutes}", 1)
+    file.write_text(head + mark + tail)
+    with pytest.raises(StudyError) as met:
+        check_inputs(open_study(small))
+    said = " ".join(str(met.value).replace(". ", "; ").split())
+    assert station in said
+    assert words.lower() in said.lower()

@@ -229,3 +229,37 @@ def test_an_interval_that_does_not_divide_an_hour_is_refused():
     record = build_record(reading_of({"speed_80": np.array([1.0, 2.0])}, station))
     with pytest.raises(StudyError, match="a whole number of intervals"):
         record.hourly()
+
+
+def test_a_persons_count_is_that_of_the_record_whatever_was_written():
+    reading = mast()
+    row = decision_row(
+        channel="temperature_5",
+        start=reading.frame.index[1990],
+        stop=reading.frame.index[2060],
+        rule="manual",
+        reason="wet",
+        decision="accepted",
+        who="E. Marsh",
+        when="2026-02-03",
+        count=999,
+    )
+    last = build_record(reading, FEW, row).ledger.iloc[-1]
+    assert (last["who"], last["count"]) == ("E. Marsh", 20)  # 70 intervals, 50 without a value
+
+
+def test_a_decision_outside_the_record_is_refused():
+    reading = mast()
+    start = reading.frame.index[-1] + pd.Timedelta(days=300)
+    row = decision_row(
+        channel="speed_80",
+        start=start,
+        stop=start + pd.Timedelta(hours=1),
+        rule="manual",
+        reason="wet",
+        decision="accepted",
+        who="E. Marsh",
+        when="2026-02-03",
+    )
+    with pytest.raises(StudyError, match="A decision concerns values of the record"):
+        build_record(reading, FEW, row)

@@ -13,6 +13,7 @@ masks it.
 from __future__ import annotations
 
 import csv
+import difflib
 import io
 from collections.abc import Iterable
 from pathlib import Path
@@ -22,6 +23,7 @@ import pandas as pd
 from numpy.typing import NDArray
 from pandas.api.typing import NaTType
 
+from windkit.study.checks import RULES
 from windkit.study.errors import StudyError
 
 __all__ = [
@@ -35,7 +37,9 @@ __all__ = [
     "ledger_of",
     "masked_by",
     "read_ledger",
+    "refuse_rows_outside",
     "rows_in",
+    "values_in",
     "write_ledger",
 ]
 
@@ -55,6 +59,10 @@ LEDGER_COLUMNS = (
 AUTOMATIC = "automatic"
 #: Stands for every channel, and in a rejected row for every rule.
 ALL = "*"
+#: Rule of a span that no check but a person found.
+MANUAL = "manual"
+#: Where `read_ledger` leaves the line of each row, for what is said of it later.
+_LINES = "lines"
 _DECISIONS = ("accepted", "rejected")
 _STAMP = "%Y-%m-%dT%H:%M:%SZ"
 
@@ -93,7 +101,8 @@ def read_ledger(path: Path) -> pd.DataFrame:
     ------
     StudyError
         If a column is missing, a stamp cannot be read, a span is empty, a decision is neither
-        accepted nor rejected, or a person's row has no name or reason.
+        accepted nor rejected, no check has the rule's name, or a person's row has no name or
+        reason.
     """
     if not path.is_file():
         return empty_ledger()
@@ -117,8 +126,13 @@ def read_ledger(path: Path) -> pd.DataFrame:
             rule=f"a ledger has the columns {','.join(LEDGER_COLUMNS)}",
             remedy="write this header",
         )
-    rows = [_checked(row, path.name, reader.line_num) for row in reader]
-    return ledger_of(rows)
+    rows, lines = [], []
+    for row in reader:
+        rows.append(_checked(row, path.name, reader.line_num))
+        lines.append(reader.line_num)
+    ledger = ledger_of(rows)
+    ledger.attrs[_LINES] = lines
+    return ledger
 
 
 def _refuse_other_separator(text: str, file: str) -> None:
@@ -174,6 +188,15 @@ def _checked(row: dict[str, str | None], file: str, line: int) -> dict[str, obje
             raise refuse(
                 f"{name} is empty", "each row says what, which rule and who", f"fill in {name}"
             )
+    known = (*RULES, MANUAL, ALL)
+    if fields["rule"] not in known:
+        near = difflib.get_close_matches(fields["rule"].lower(), known, n=1)
+        raise refuse(
+            f"there is no rule '{fields['rule']}'",
+            f"a row names the check it decides on ({', '.join(RULES)}), {MANUAL} for a span a "
+            f"person found, or {ALL} for whatever masked it",
+            f"write {near[0]}" if near else f"write {MANUAL} if a person found the span",
+        )
     if fields["who"] != AUTOMATIC and not fields["reason"]:
         raise refuse("a person's decision has no reason", "a reviewer reads why", "fill in reason")
     try:
@@ -264,6 +287,69 @@ def decision_row(
 def human_rows(ledger: pd.DataFrame) -> pd.DataFrame:
     """The rows persons decided, in their order."""
     return ledger[ledger["who"] != AUTOMATIC].reset_index(drop=True)
+
+
+def values_in(frame: pd.DataFrame, spans: pd.DataFrame) -> list[int]:
+    """Values of a frame within each span; of a span on all channels those of all.
+
+    Parameters
+    ----------
+    frame : DataFrame
+        Channels on an index of interval starts.
+    spans : DataFrame
+        With columns channel, from and to; a ledger is one.
+
+    Returns
+    -------
+    list of int
+        One count a row.
+    """
+    known = frame.notna()
+    known[ALL] = known.sum(axis=1)
+    below = {name: np.append(0, np.cumsum(known[name].to_numpy())) for name in known.columns}
+    starts = frame.index.searchsorted(pd.DatetimeIndex(spans["from"]))
+    stops = frame.index.searchsorted(pd.DatetimeIndex(spans["to"]))
+    return [
+        int(below[channel][stop] - below[channel][start])
+        for channel, start, stop in zip(spans["channel"], starts, stops, strict=True)
+    ]
+
+
+def refuse_rows_outside(
+    index: pd.DatetimeIndex, interval: pd.Timedelta, ledger: pd.DataFrame
+) -> None:
+    """Refuse a person's row whose span has nothing in common with the record's period.
+
+    Parameters
+    ----------
+    index : DatetimeIndex
+        Interval starts of the record.
+    interval : Timedelta
+        Length of its intervals.
+    ledger : DataFrame
+        Rows as read.
+
+    Raises
+    ------
+    StudyError
+        At the first such row, with both periods.
+    """
+    first, end = index[0], index[-1] + interval
+    outside = (ledger["from"] >= end) | (ledger["to"] <= first)
+    outside &= ledger["who"] != AUTOMATIC
+    if not outside.any():
+        return
+    at = int(outside.to_numpy().argmax())
+    lines = ledger.attrs.get(_LINES, [])
+    row = ledger.iloc[at]
+    raise StudyError.of(
+        file="ledger.csv",
+        line=lines[at] if len(lines) == len(ledger) else None,
+        met=f"a row on {row['channel']} goes from {row['from']:{_STAMP}} to {row['to']:{_STAMP}}, "
+        f"but the record from {first:{_STAMP}} to {end:{_STAMP}}",
+        rule="a decision concerns values of the record",
+        remedy="correct the dates (they are UTC), or take the row out if those values are gone",
+    )
 
 
 def rows_in(index: pd.DatetimeIndex, start: pd.Timestamp, stop: pd.Timestamp) -> slice:

@@ -22,7 +22,16 @@ from windkit.study.hourly import (
     hourly_weighted_directions,
     without_calm_directions,
 )
-from windkit.study.ledger import ALL, AUTOMATIC, apply_ledger, empty_ledger, human_rows, ledger_of
+from windkit.study.ledger import (
+    ALL,
+    AUTOMATIC,
+    apply_ledger,
+    empty_ledger,
+    human_rows,
+    ledger_of,
+    refuse_rows_outside,
+    values_in,
+)
 from windkit.study.reading import Reading
 from windkit.study.stations import StationSettings
 
@@ -50,7 +59,8 @@ class Record:
     frame : DataFrame
         Values that count: masked through the ledger, and directions of calms taken out.
     ledger : DataFrame
-        Automatic rows first, then the rows of persons, in the order they act.
+        Automatic rows first, then the rows of persons, in the order they act; ``count`` of the
+        latter is what the reading holds, whatever was written.
     spans : DataFrame
         Everything the checks found, whether it masks or only waits for a decision.
     recovery : DataFrame
@@ -138,7 +148,8 @@ def build_record(
     Raises
     ------
     StudyError
-        If the ledger names an unknown channel, or nothing is left of the main wind speed.
+        If the ledger names an unknown channel or a span outside the record, or nothing is
+        left of the main wind speed.
     """
     check_settings = check_settings or CheckSettings()
     spans = run_checks(reading, check_settings, references=references, elevation=elevation)
@@ -146,7 +157,14 @@ def build_record(
     automatic = automatic_rows(spans, check_settings)
     parts = [part for part in (automatic, decided) if len(part)]
     whole = pd.concat(parts, ignore_index=True) if parts else empty_ledger()
-    masked = apply_ledger(reading.frame, whole)
+    masked = apply_ledger(reading.frame, whole)  # refuses an unknown channel
+    index = reading.frame.index
+    assert isinstance(index, pd.DatetimeIndex)
+    if ledger is not None:
+        refuse_rows_outside(index, reading.interval, ledger)
+    if len(decided):
+        counted = values_in(reading.frame, decided)
+        whole["count"] = [*automatic["count"], *counted]
     main = reading.settings.main_wind_speed
     if masked[main].isna().all():
         raise StudyError.of(

@@ -28,13 +28,17 @@ from windkit.study.ledger import (
     human_rows,
     ledger_of,
     read_ledger,
+    values_in,
     write_ledger,
 )
 from windkit.study.record import Record
 from windkit.study.stations import DIRECTION, ChannelSettings
 
 __all__ = [
+    "AVERAGED",
     "BULK",
+    "COVERED",
+    "DECIDED",
     "MASKED",
     "WAITING",
     "add_to_ledger",
@@ -48,6 +52,11 @@ __all__ = [
 #: State of a span that a check masks, and of one that masks nothing before a person says so.
 MASKED = "masked"
 WAITING = "waiting"
+#: States of spans of the second kind that wait no more: a person decided on them or on a wider
+#: span; every value of them is masked by another span; the pair's average has dealt with them.
+DECIDED = "decided"
+COVERED = "already masked"
+AVERAGED = "dealt with by averaging"
 #: How the reason of a decision begins that was taken on many spans at once.
 BULK = "bulk"
 
@@ -61,27 +70,41 @@ _NEIGHBOURS = 2
 _KEY = ["channel", "from", "to", "rule"]
 
 
-def spans_to_review(record: Record) -> pd.DataFrame:
+def spans_to_review(record: Record, *, averaged: bool = False) -> pd.DataFrame:
     """Everything the checks of a record found, in the order to go through it.
 
     Parameters
     ----------
     record : Record
         The checked record.
+    averaged : bool
+        Whether the study's speed is a pair averaged by direction, which leaves nothing to decide
+        of the mast's shadow.
 
     Returns
     -------
     DataFrame
         The columns of a span; ``state``, `MASKED` where the check masks by itself and `WAITING`
-        where it only asks; ``believed``, values of the span that count in the record as it
-        stands; ``decision``, what a person said of this span before, or empty text. Spans of one
-        check stand together in the order of time, the check with the fewest first: what is rare
-        is not to be found behind a thousand ordinary spans.
+        where it only asks, or why it asks no more: `DECIDED`, `AVERAGED`, `COVERED`;
+        ``believed``, values of the span that count in the record as it stands; ``decision``, what
+        a person said of this span before, or empty text. Spans of one check stand together in the
+        order of time, the check with the fewest first: what is rare is not to be found behind a
+        thousand ordinary spans.
     """
     spans = record.spans.loc[:, list(SPAN_COLUMNS)].copy()
     acting = set(record.ledger.loc[record.ledger["who"] == AUTOMATIC, "rule"])
-    spans["state"] = np.where(spans["rule"].isin(acting), MASKED, WAITING)
-    spans["believed"] = _believed(record, spans)
+    spans["believed"], had = _values_within(record, spans)
+    undecided = pd.MultiIndex.from_frame(record.suspects[_KEY])
+    spans["state"] = np.select(
+        [
+            spans["rule"].isin(acting),
+            ~pd.MultiIndex.from_frame(spans[_KEY]).isin(undecided),
+            (spans["rule"] == "shadow") & averaged,
+            (spans["believed"] == 0) & (np.asarray(had) > 0),
+        ],
+        [MASKED, DECIDED, AVERAGED, COVERED],
+        default=WAITING,
+    )
     size = spans.groupby("rule")["rule"].transform("size") if len(spans) else 0
     order = spans["rule"].map({rule: at for at, rule in enumerate(RULES)})
     spans = spans.assign(_size=size, _order=order).sort_values(
@@ -261,18 +284,9 @@ def _replace_ledger(file: Path, ledger: pd.DataFrame) -> None:
         part.unlink(missing_ok=True)
 
 
-def _believed(record: Record, spans: pd.DataFrame) -> list[int]:
-    """Values within each span that the ledger leaves in."""
-    known = record.masked.notna()
-    known[ALL] = known.sum(axis=1)
-    below = {name: np.append(0, np.cumsum(known[name].to_numpy())) for name in known.columns}
-    index = record.raw.index
-    starts = index.searchsorted(pd.DatetimeIndex(spans["from"]))
-    stops = index.searchsorted(pd.DatetimeIndex(spans["to"]))
-    return [
-        int(below[channel][stop] - below[channel][start])
-        for channel, start, stop in zip(spans["channel"], starts, stops, strict=True)
-    ]
+def _values_within(record: Record, spans: pd.DataFrame) -> tuple[list[int], list[int]]:
+    """Values within each span that the ledger leaves in, and values there were."""
+    return values_in(record.masked, spans), values_in(record.raw, spans)
 
 
 def _shown_channels(record: Record, name: str, rule: str) -> list[ChannelSettings]:

@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import copy
 import json
+import math
 import os
 import re
 from collections.abc import Callable, Mapping, Sequence
@@ -17,11 +18,12 @@ from pathlib import Path
 from typing import Any
 
 import nbformat
+import pandas as pd
 
 from windkit.study.artifacts import first_stale_step, load_artifact
 from windkit.study.errors import StudyError
 from windkit.study.folder import Study, open_study
-from windkit.study.ledger import masked_by, read_ledger
+from windkit.study.ledger import masked_by, read_ledger, refuse_rows_outside
 from windkit.study.long_term_lines import refuse_thin_overlap
 from windkit.study.parameters import (
     PARAMETERS,
@@ -31,6 +33,7 @@ from windkit.study.parameters import (
     refuse_unknown,
 )
 from windkit.study.reading import read_station
+from windkit.study.stations import StationSettings
 from windkit.study.steps import STEPS, Step, step_named
 from windkit.study.turbine import read_curve
 from windkit.study.unit_slips import refuse_unit_slips
@@ -43,6 +46,8 @@ PARAMETERS_TAG = "parameters"
 
 #: Longest time one cell may take [s]; a kernel that died would otherwise hang the run.
 _CELL_TIMEOUT = 900
+
+_MINUTES_PER_HOUR = 60.0
 
 #: How a running kernel names the parts of a panel.
 _MODEL_ID = re.compile(r"[0-9a-f]{32}")
@@ -63,10 +68,14 @@ def check_inputs(study: Study) -> None:
     settings = study.settings
     places = {f"references ({each.name})": each for each in settings.references}
     for place, station in {"mast": settings.mast, **places}.items():
+        _refuse_other_intervals(station, place)
         for name in station.files:
             study.path(name, key=f"{place}.files")
     mast = read_station(settings.mast, study.folder)
-    masked_by(mast.frame.iloc[:0], read_ledger(study.ledger))  # its channels, before its spans
+    ledger = read_ledger(study.ledger)
+    masked_by(mast.frame.iloc[:0], ledger)  # its channels, before its spans
+    assert isinstance(mast.frame.index, pd.DatetimeIndex)
+    refuse_rows_outside(mast.frame.index, mast.interval, ledger)
     refuse_unit_slips(mast)
     for station in settings.references:
         reading = read_station(station, study.folder)
@@ -151,6 +160,27 @@ def executed_workbooks(study: Study) -> list[Path]:
                 remedy=f"run `sitestudy run {study.folder.name}`",
             )
     return files
+
+
+def _refuse_other_intervals(station: StationSettings, place: str) -> None:
+    """The workbooks pair hours: an hour holds a whole number of intervals."""
+    minutes = station.interval_min
+    key = f"{place}.interval_min"
+    if minutes > _MINUTES_PER_HOUR:
+        raise StudyError.of(
+            key=key,
+            met=f"interval_min is {minutes:g}",
+            rule="stations with intervals above 60 minutes are not supported by the workbooks",
+            remedy="get hourly values (windkit.correct_long_term takes daily ones from a script)",
+        )
+    per_hour = round(_MINUTES_PER_HOUR / minutes)
+    if not math.isclose(per_hour * minutes, _MINUTES_PER_HOUR, rel_tol=1e-9):
+        raise StudyError.of(
+            key=key,
+            met=f"interval_min is {minutes:g}",
+            rule="an hourly mean needs a whole number of intervals in an hour",
+            remedy="get the record in intervals that divide an hour, such as 10 or 60 minutes",
+        )
 
 
 def _refuse_stale_before(study: Study, first: Step) -> None:

@@ -22,7 +22,7 @@ from windkit.faces.figures_review import span_picture
 from windkit.faces.panels import ReviewPanel
 from windkit.study.folder import open_study
 from windkit.study.ledger import LEDGER_COLUMNS, read_ledger
-from windkit.study.measured import load_record
+from windkit.study.measured import examine_record, load_record
 from windkit.study.record import Record
 
 HEADER = ",".join(LEDGER_COLUMNS)
@@ -79,13 +79,16 @@ def several(panel: ReviewPanel) -> str:
 def test_the_first_state_shows_a_span_and_what_is_left(panel):
     count = len(panel._spans)
     assert {"range", "stuck"} <= set(rules(panel))
-    assert plain(panel.counter).startswith(f"{count} of {count} spans left to decide")
+    waiting = int((panel._spans["state"] == "waiting").sum())
+    assert 0 < waiting < count
+    assert plain(panel.counter).startswith(f"{waiting} of {count} spans left to decide")
+    assert "masked by their check" in plain(panel.counter)
     assert f"1 of {count}" in plain(panel.facts)
     assert str(panel.span["reason"]) in plain(panel.facts)
     assert bytes(panel.picture.value).startswith(b"\x89PNG")
     assert panel.undo.disabled
     assert panel.decided.empty
-    assert repr(panel) == f"ReviewPanel: {count} of {count} spans left to decide"
+    assert repr(panel) == f"ReviewPanel: {waiting} of {count} spans left to decide"
 
 
 def test_a_decision_is_a_row_of_the_file_at_once(panel, tmp_path):
@@ -126,11 +129,13 @@ def test_a_rejected_span_keeps_its_values_when_the_record_is_built_again(panel, 
 def test_a_decision_moves_on_to_what_is_open(panel):
     count = choose(panel, several(panel))
     total = len(panel._spans)
+    waiting = int((panel._spans["state"] == "waiting").sum())
+    assert panel.span["state"] == "waiting"
     first = panel._at
     panel.reason.value = "seen"
     panel.accept.click()
     assert panel._at == first + 1
-    assert plain(panel.counter).startswith(f"{total - 1} of {total} spans left")
+    assert plain(panel.counter).startswith(f"{waiting - 1} of {total} spans left")
     panel.back.click()
     assert panel._at == first
     assert "decided: left out" in plain(panel.facts)
@@ -303,3 +308,12 @@ def test_a_run_without_a_page_freezes_into_the_report_the_same_twice(folder, rec
     assert html.count('<table class="site-table') == 1
     assert "ReviewPanel" not in html.split("</details>")[1]
     assert html == _executed(folder, "again.ipynb")
+
+
+def test_text_table_and_panel_give_one_number(folder):
+    study = open_study(folder)
+    record = load_record(study)
+    found = examine_record(study, record)
+    number = len(found.suspects)
+    assert found.outcome.said["suspects"].startswith(f"{number:,} spans wait for a decision")
+    assert repr(ReviewPanel(record, study.ledger)).startswith(f"ReviewPanel: {number} of ")

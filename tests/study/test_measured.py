@@ -12,7 +12,9 @@ from tests.small_study import edit
 from windkit.study.errors import StudyError
 from windkit.study.folder import open_study
 from windkit.study.measured import Measured, examine_record, load_record
+from windkit.study.measured_words import warnings_of
 from windkit.study.running import check_inputs
+from windkit.study.stations import ChannelSettings
 
 #: Off, so that a record made for one figure is not judged for its looks.
 NO_CHECKS = "[checks]\nmasking_rules = []\n\n[turbine]"
@@ -197,3 +199,32 @@ def test_intervals_that_the_workbooks_cannot_pair_are_refused_at_load(
     said = " ".join(str(met.value).replace(". ", "; ").split())
     assert station in said
     assert words.lower() in said.lower()
+
+
+def test_the_worth_table_stands_on_the_studys_own_speed(small):
+    found = measured(small)
+    base = found.worth.set_index("rule").loc["all rules"]
+    assert base["mean_speed"] == pytest.approx(found.outcome.number("measured.mean_speed_m_s"))
+
+
+def test_a_count_that_the_record_does_not_bear_out_is_told(small):
+    with (small / "ledger.csv").open("a") as stream:
+        for count in ("50", "0"):  # 0 stands for unknown
+            stream.write(
+                "speed_60,2022-03-10T00:00:00Z,2022-03-12T00:00:00Z,"
+                f"{count},manual,ice,,accepted,A. R.,\n"
+            )
+    said = measured(small).outcome.said["spans"]
+    assert said.endswith("speed_60 from 2022-03-10 (50 written, 48 counted).")
+
+
+def test_warnings_of_north_and_months_say_what_follows():
+    months = pd.Series(np.full(12, 8.0), index=range(1, 13))
+    north = pd.DataFrame({"vane": ["d"], "against": ["P"], "difference_deg": [-10.3]})
+    main = ChannelSettings(
+        name="s", column="S", quantity="wind_speed", statistic="mean", height_m=80.0, unit="m/s"
+    )
+    clock = pd.DataFrame(columns=["reference", "median_lag_hours"])
+    said = warnings_of(months, 8.2, 8.0, 1.0, main, north, clock)
+    assert said[0].endswith("pairs hours, so the months' weights do not enter the energy.")
+    assert said[1].endswith("not itself used for the energy, but for sectors and the rose.")

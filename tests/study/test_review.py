@@ -259,3 +259,32 @@ def test_a_decision_without_name_or_reason_is_refused(change, words, bulk):
     spans = spans_to_review(with_spans(record_of(), *SOME))
     with pytest.raises(StudyError, match="(?i)" + words):
         decision_rows(spans, bulk=bulk, **{**WORDS, **change})
+
+
+def test_a_span_inside_a_masked_one_or_decided_with_a_wider_one_waits_no_more():
+    record = with_spans(record_of(), *SOME, ("speed_20", "shadow", "2026-01-07", "2026-01-08", 144))
+    wide = decision_row(
+        channel="speed_60",
+        start=pd.Timestamp("2026-01-01", tz="UTC"),
+        stop=pd.Timestamp("2026-01-10", tz="UTC"),
+        rule="manual",
+        reason="bearing worn",
+        decision="accepted",
+        who="E. Marsh",
+        when="2026-11-30",
+    )
+    also = wide.assign(channel="speed_80", rule="step", decision="rejected")
+    ledger = pd.concat([record.ledger, wide, also], ignore_index=True)
+    changed = replace(record, ledger=ledger)
+
+    def states(**how: bool) -> dict[tuple[str, str], str]:
+        spans = spans_to_review(changed, **how)
+        return {(row.channel, row.rule): row.state for row in spans.itertuples()}
+
+    assert states() == {
+        ("speed_80", "range"): "masked",
+        ("speed_60", "step"): "already masked",
+        ("speed_80", "step"): "decided",
+        ("speed_20", "shadow"): "waiting",
+    }
+    assert states(averaged=True)["speed_20", "shadow"] == "dealt with by averaging"

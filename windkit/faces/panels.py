@@ -32,7 +32,11 @@ from windkit.study.errors import StudyError
 from windkit.study.ledger import ALL, AUTOMATIC, empty_ledger, read_ledger
 from windkit.study.record import Record
 from windkit.study.review import (
+    AVERAGED,
+    COVERED,
+    DECIDED,
     MASKED,
+    WAITING,
     add_to_ledger,
     decision_rows,
     spans_to_review,
@@ -43,6 +47,12 @@ from windkit.study.review import (
 __all__ = ["ReviewPanel"]
 
 _EVERY_CHECK = ""
+_OTHERS = {
+    MASKED: "masked by their check",
+    AVERAGED: "of the mast's shadow dealt with by averaging the pair",
+    COVERED: "inside masked ones",
+    DECIDED: "decided with a wider span",
+}
 _SAID = {"accepted": "left out", "rejected": "kept"}
 
 
@@ -62,6 +72,8 @@ class ReviewPanel:
         Name of the person who decides; it can be written in the panel too.
     today : callable, optional
         Gives the date of a decision; the clock's if left out.
+    averaged : bool
+        See `windkit.study.review.spans_to_review`.
 
     Attributes
     ----------
@@ -98,11 +110,14 @@ class ReviewPanel:
         *,
         who: str = "",
         today: Callable[[], date] | None = None,
+        averaged: bool = False,
     ) -> None:
         self._record = record
         self._file = Path(ledger_file)
         self._today = today or date.today
-        self._spans = with_decisions(spans_to_review(record), read_ledger(self._file))
+        self._spans = with_decisions(
+            spans_to_review(record, averaged=averaged), read_ledger(self._file)
+        )
         self._written: list[tuple[int, pd.DataFrame]] = []
         self._at = 0
         # The lab sends events of one panel to several threads of the kernel; they take turns.
@@ -158,8 +173,7 @@ class ReviewPanel:
         return self._spans.iloc[self._at]
 
     def __repr__(self) -> str:
-        open_count = int((self._spans["decision"] == "").sum())
-        return f"ReviewPanel: {open_count} of {len(self._spans)} spans left to decide"
+        return f"ReviewPanel: {_waiting(self._spans)} of {len(self._spans)} spans left to decide"
 
     def _repr_mimebundle_(self, **options: Any) -> dict[str, Any]:
         return {**self.widget._repr_mimebundle_(**options), "text/plain": repr(self)}
@@ -291,14 +305,25 @@ class ReviewPanel:
 def _counter(spans: pd.DataFrame) -> str:
     if spans.empty:
         return "<b>The checks found nothing to look at.</b>"
-    left = spans[spans["decision"] == ""]
-    if left.empty:
+    if (spans["decision"] != "").all():
         return f"<b>All {number_text(len(spans))} spans are decided.</b>"
-    masked = int((left["state"] == MASKED).sum())
+    open_ones = spans[spans["decision"] == ""]
+    told = [
+        f"{number_text(int((open_ones['state'] == state).sum()))} {what}"
+        for state, what in _OTHERS.items()
+        if (open_ones["state"] == state).any()
+    ]
+    decided = len(spans) - len(open_ones)
+    told += [f"{number_text(decided)} decided"] if decided else []
     return (
-        f"<b>{number_text(len(left))} of {number_text(len(spans))} spans left to decide</b>: "
-        f"{number_text(masked)} masked by their check, {number_text(len(left) - masked)} waiting"
+        f"<b>{number_text(_waiting(spans))} of {number_text(len(spans))} spans left to decide</b>"
+        + (f"; the others: {', '.join(told)}" if told else "")
     )
+
+
+def _waiting(spans: pd.DataFrame) -> int:
+    """Spans that wait for a decision; those that are masked or dealt with can be decided too."""
+    return int(((spans["decision"] == "") & (spans["state"] == WAITING)).sum())
 
 
 def _facts(span: pd.Series, place: int, count: int) -> str:

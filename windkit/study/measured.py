@@ -21,13 +21,20 @@ from windkit.study import campaign
 from windkit.study.artifacts import Outcome, Row
 from windkit.study.check_worth import worth_of_checks
 from windkit.study.checks import free_of_shadow, pair_ratio
+from windkit.study.checks.spans import SPAN_COLUMNS
 from windkit.study.cup_pair import PairSpeed, speed_of_pair
 from windkit.study.folder import Study
 from windkit.study.gap_filling import FilledChannel, fill_gaps
-from windkit.study.ledger import read_ledger
-from windkit.study.measured_words import handling_in_words, record_in_words, warnings_of
+from windkit.study.ledger import human_rows, read_ledger
+from windkit.study.measured_words import (
+    handling_in_words,
+    record_in_words,
+    recount_in_words,
+    warnings_of,
+)
 from windkit.study.reading import Reading, read_station
 from windkit.study.record import Record, build_record
+from windkit.study.review import WAITING, spans_to_review
 from windkit.study.stations import ChannelSettings
 from windkit.study.turbine import read_curve
 from windkit.study.unit_slips import refuse_unit_slips
@@ -57,7 +64,8 @@ class Measured:
     spans : DataFrame
         The ledger: automatic spans first, then the decisions of people.
     suspects : DataFrame
-        Spans of checks that mask nothing, the largest first.
+        Spans that wait for a decision, the largest first: of checks that mask nothing, without
+        those that a person, a masked span or the average of a pair has dealt with.
     worth : DataFrame
         Mean speed and energy with and without each rule.
     recovery : DataFrame
@@ -161,7 +169,14 @@ def examine_record(study: Study, record: Record) -> Measured:
     )
     weibull = fit_weibull(speed, calm_threshold=highest_calm)
     curve = read_curve(study)
-    worth = worth_of_checks(record, lambda v: power_at(curve, v))
+    worth = worth_of_checks(
+        record,
+        lambda v: power_at(curve, v),
+        pair=study.settings.measured.main_pair,
+        speed_of=lambda changed, averaged: _main_series(study, changed, averaged=averaged)[0][
+            "wind_speed"
+        ].to_numpy(dtype=float),
+    )
     north = campaign.north_table(record, references)
     clock = campaign.clock_table(record, references)
     plain, seasonal = float(np.nanmean(speed)), float(by_month.mean())
@@ -186,18 +201,18 @@ def examine_record(study: Study, record: Record) -> Measured:
                 f"mean of {int(near_15['count'].iloc[0])} intervals of 14.5 to 15.5 m/s, free of "
                 "the mast, no trend removed", as_percent=True)
         )  # fmt: skip
-    spans, suspects = _readable(record.ledger), _readable(record.suspects)
-    suspects = suspects.sort_values("count", ascending=False, ignore_index=True, kind="stable")
-    if average is not None:
-        # Averaging by direction has dealt with the mast's shadow already.
-        suspects = suspects[suspects["rule"] != "shadow"].reset_index(drop=True)
+    states = spans_to_review(record, averaged=average is not None)
+    waiting = states.loc[states["state"] == WAITING, list(SPAN_COLUMNS)]
+    waiting = waiting.sort_values(["count", "from"], ascending=[False, True], kind="stable")
+    spans, suspects = _readable(record.ledger), _readable(waiting.reset_index(drop=True))
     counts = campaign.channel_counts(record)
     checks_found = campaign.checks_table(record, checks)
     rows_by_fate = campaign.rows_table(record)
     said = record_in_words(
         record, main, share, pair, plain, seasonal, weibull, exponent, turbulence
     )
-    said |= handling_in_words(average, filled, worth, north, clock, suspects)
+    said |= handling_in_words(average, filled, worth, north, clock, states["state"])
+    said["spans"] += recount_in_words(human_rows(read_ledger(study.ledger)), record.ledger)
     hour = index + pd.Timedelta(minutes=settings.interval_min / 2)
     tables = {
         "record": record.masked,
@@ -241,11 +256,12 @@ def examine_record(study: Study, record: Record) -> Measured:
 
 
 def _main_series(
-    study: Study, record: Record
+    study: Study, record: Record, *, averaged: bool = True
 ) -> tuple[pd.DataFrame, PairSpeed | None, FilledChannel | None]:
     """The speed and direction the study stands on, and what each speed stands on.
 
     Columns wind_speed [m/s], wind_direction [deg], basis (a channel, ``both``, or ``filled``).
+    Without `averaged` the main cup stands alone, even if the study names a pair.
     """
     settings, choice = record.settings, study.settings.measured
     main = settings.main_wind_speed
@@ -253,7 +269,7 @@ def _main_series(
     speed = record.frame[main]
     basis = pd.Series(np.where(speed.notna(), main, ""), index=speed.index)
     average = None
-    if choice.main_pair is not None:
+    if averaged and choice.main_pair is not None:
         average = speed_of_pair(
             record, main, choice.main_pair, check_settings=study.settings.checks
         )

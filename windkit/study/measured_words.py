@@ -12,9 +12,10 @@ from windkit.study.cup_pair import PairSpeed
 from windkit.study.gap_filling import FilledChannel
 from windkit.study.ledger import AUTOMATIC
 from windkit.study.record import Record
+from windkit.study.review import AVERAGED, COVERED, DECIDED, MASKED, WAITING
 from windkit.study.stations import ChannelSettings
 
-__all__ = ["handling_in_words", "record_in_words", "warnings_of"]
+__all__ = ["handling_in_words", "record_in_words", "recount_in_words", "warnings_of"]
 
 #: Recovery under which guidelines ask for a word [1]: Bailey et al. 1997 (id MEA-10, from memory).
 EXPECTED_RECOVERY = 0.9
@@ -43,7 +44,8 @@ def warnings_of(
     elif abs(seasonal / plain - 1) > 0.01:
         warnings.append(
             f"The plain mean is {plain:.2f} m/s and the mean of calendar months {seasonal:.2f}: "
-            "months are represented unequally."
+            "months are represented unequally; the long-term correction pairs hours, so the "
+            "months' weights do not enter the energy."
         )
     if share < EXPECTED_RECOVERY:
         warnings.append(
@@ -58,7 +60,8 @@ def warnings_of(
         if abs(float(row.difference_deg)) > _NORTH_WORTH_A_WORD:  # type: ignore[arg-type]
             warnings.append(
                 f"{row.vane} differs from {row.against} by {row.difference_deg:.1f}° on average: "
-                "one of the norths is in doubt."
+                "one of the norths is in doubt; a direction is not itself used for the energy, "
+                "but for sectors and the rose."
             )
     for row in clock.itertuples():
         if abs(float(row.median_lag_hours)) > _LAG_WORTH_A_WORD:  # type: ignore[arg-type]
@@ -121,7 +124,7 @@ def handling_in_words(
     worth: pd.DataFrame,
     north: pd.DataFrame,
     clock: pd.DataFrame,
-    suspects: pd.DataFrame,
+    states: pd.Series,
 ) -> dict[str, str]:
     """What was done to the main speed and what it is worth."""
     changes = worth[~worth["rule"].isin(["all rules", "no rule"])]
@@ -129,8 +132,7 @@ def handling_in_words(
         "average": "The study stands on one cup; no pair is averaged.",
         "filled": "Gaps are left open.",
         "worth": "No rule touches the main speed.",
-        "suspects": f"{len(suspects)} spans wait for a decision; until somebody accepts them they "
-        "stay in the record.",
+        "suspects": _spans_in_words(states),
         "north": "There is no vane to compare.",
         "clock": "No reference overlaps enough to test the clock.",
     }
@@ -168,3 +170,52 @@ def handling_in_words(
             + "."
         )
     return said
+
+
+def _spans_in_words(states: pd.Series) -> str:
+    """How many spans wait, and what became of the others; together all that was found."""
+
+    def count(state: str) -> int:
+        return int((states == state).sum())
+
+    def number(value: int) -> str:
+        return f"{value:,}"
+
+    others = [
+        (MASKED, "are masked by their check"),
+        (AVERAGED, "of the mast's shadow are dealt with by averaging the pair"),
+        (COVERED, "lie wholly inside masked ones"),
+        (DECIDED, "were decided by people"),
+    ]
+    told = [f"{number(count(state))} {what}" for state, what in others if count(state)]
+    said = (
+        f"{number(count(WAITING))} spans wait for a decision; until somebody accepts them their "
+        "values stay in the record."
+    )
+    if told:
+        said += f" Of the {number(len(states))} that the checks found, {'; '.join(told)}."
+    return said
+
+
+def recount_in_words(written: pd.DataFrame, ledger: pd.DataFrame) -> str:
+    """Counts of people's rows that the record does not bear out; empty text if there are none.
+
+    Parameters
+    ----------
+    written : DataFrame
+        Rows of people as they stand in the file.
+    ledger : DataFrame
+        The record's, where their values are counted anew; people's rows last.
+    """
+    counted = ledger["count"].iloc[len(ledger) - len(written) :]
+    told = [
+        f"{row.channel} from {row[2]:%Y-%m-%d} ({row.count_written:,} written, {now:,} counted)"
+        for row, now in zip(
+            written.rename(columns={"count": "count_written"}).itertuples(), counted, strict=True
+        )
+        if row.count_written not in (0, now)  # 0 stands for unknown
+    ]
+    if not told:
+        return ""
+    listed = "; ".join(told)
+    return f" Values of people's rows are counted from the record; otherwise written: {listed}."

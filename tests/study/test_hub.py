@@ -300,6 +300,13 @@ def test_a_mast_below_two_thirds_of_the_hub_is_a_named_warning(hub, told):
     assert any(w.startswith("Long extrapolation") for w in warnings) is told
 
 
+def test_one_height_says_that_it_has_no_classes_and_shows_no_empty_table():
+    found = carried(study({"a": 80.0}, hub=100.0), 0.2)
+    assert any('asks for "by_class"' in w and "0.200" in w for w in found.warnings)
+    assert found.methods["hub_mean_speed_m_s"].tolist() == pytest.approx([8.0 * 1.25**0.2])
+    assert found.levels["told_apart_by"].tolist() == ["no classes of hour and month"]
+
+
 def test_a_dead_sensor_does_not_take_the_others_with_it():
     settings = study(CUPS)
     frame = record(settings, 0.2)

@@ -62,7 +62,7 @@ def share_of(found: HubAir, quantity: str, word: str) -> float:
 )
 def test_density_of_moist_air_where_the_sensors_hang(celsius, pressure, humidity, expected):
     settings = study(sensors=AIR)
-    index = hours(days=2)
+    index = hours()
     frame = pd.DataFrame({"t": celsius + 273.15, "p": pressure, "rh": humidity}, index=index)
     assert hub_air(settings, frame).mean == pytest.approx(expected, abs=1e-5)
 
@@ -97,7 +97,7 @@ def test_sensors_below_are_carried_up_as_the_standard_atmosphere_is():
 
 def test_without_any_sensor_the_standard_atmosphere():
     # id AIR-1b: 1.1117 kg/m3 at 1000 m.
-    found = hub_air(study(elevation=900.0), pd.DataFrame({"speed_60": 8.0}, index=hours(days=2)))
+    found = hub_air(study(elevation=900.0), pd.DataFrame({"speed_60": 8.0}, index=hours()))
     assert found.mean == pytest.approx(1.1117, abs=6e-5)
     assert found.basis.startswith("standard atmosphere")
     assert found.warnings == []
@@ -106,7 +106,7 @@ def test_without_any_sensor_the_standard_atmosphere():
 def test_a_missing_barometer_is_filled_from_the_standard_atmosphere():
     # id AIR-1: 95 461 Pa at 500 m; 280 K and half saturated, the vapour by the standard's fit.
     settings = study(elevation=400.0, sensors=channel("t", "air_temperature", 100.0, "K"))
-    found = hub_air(settings, pd.DataFrame({"t": 280.0}, index=hours(days=2)))
+    found = hub_air(settings, pd.DataFrame({"t": 280.0}, index=hours()))
     vapour = 0.5 * 2.05e-5 * np.exp(0.0631846 * 280)
     expected = (95_461 / 287.05 - vapour * (1 / 287.05 - 1 / 461.5)) / 280
     assert found.mean == pytest.approx(expected, rel=3e-5)
@@ -194,3 +194,36 @@ def test_a_barometer_that_drifts_is_told_by_the_cross_check():
     assert "differ by more than 1% in 3 of 12 months" in found.warnings[0]
     ratio = found.monthly.set_index("month")["mast_over_reference"]
     assert ratio[11] / ratio[5] == pytest.approx(1.04, rel=1e-3)
+
+
+def test_two_winter_months_are_not_the_year():
+    # id AIR-1b: 1.1673 kg/m3 at 500 m for the ten months no sensor saw; 1.2 or so in winter.
+    settings = study(elevation=400.0, sensors=AIR)
+    index = hours(days=59)
+    frame = pd.DataFrame({"t": 270.0, "p": 95_461.0, "rh": 0.5}, index=index)
+    found = hub_air(settings, frame)
+    winter = found.climatology.loc[1].mean()
+    assert winter == pytest.approx(95_461 / 287.05 / 270.0, rel=2e-3)
+    assert found.mean == pytest.approx((2 * winter + 10 * 1.1673) / 12, abs=1e-4)
+    assert "10 of the standard atmosphere" in found.basis
+    assert any("2 of 12 calendar months" in text for text in found.warnings)
+
+
+def test_a_month_counts_from_half_its_hours():
+    settings = study(elevation=400.0, sensors=AIR)
+    frame = pd.DataFrame({"t": 270.0, "p": 95_461.0, "rh": 0.5}, index=hours(days=31 + 13))
+    found = hub_air(settings, frame)  # 13 of 28 days of February
+    assert found.climatology.loc[2].mean() == pytest.approx(1.1673, abs=6e-5)
+    assert found.climatology.loc[1].mean() > 1.2
+
+
+def test_a_reference_of_unknown_level_is_drawn_at_the_hub():
+    index = hours()
+    frame = pd.DataFrame({"t": 283.0, "p": 96_000.0, "rh": 0.5}, index=index)
+    far = pd.DataFrame({"t_far": 283.0, "p_far": 101_000.0}, index=index)  # five per cent denser
+    settings = study(sensors=AIR, reference=FAR)
+    found = hub_air(settings, frame, reference_air(far, settings.references[0]))
+    ours, theirs = found.monthly["air_density_kg_m3"], found.monthly["reference_air_density_kg_m3"]
+    assert theirs.to_numpy() == pytest.approx(ours.to_numpy(), rel=1e-9)
+    assert found.reference in found.said
+    assert "between" not in found.said.split(".  ")[0].split(" Against")[0]

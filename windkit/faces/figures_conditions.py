@@ -142,6 +142,7 @@ def density_by_month(
     reference_density: ArrayLike | None = None,
     *,
     mean: float | None = None,
+    reference_name: str = "reference",
     ax: Axes | None = None,
     title: str = "Air density at hub height by month",
 ) -> Axes:
@@ -154,9 +155,11 @@ def density_by_month(
     air_density : array_like
         [kg/m3].
     reference_density : array_like, optional
-        From the reference in the same hours, at its own level [kg/m3].
+        From the reference in the same hours, carried to the hub [kg/m3].
     mean : float, optional
         The study's mean [kg/m3].
+    reference_name : str
+        What the reference is called.
     ax : Axes, optional
         Where to draw.
     title : str
@@ -171,7 +174,7 @@ def density_by_month(
         if np.isfinite(other).any():
             ax.plot(
                 months, other, color=ACCENT, marker="s", markersize=3.5, linestyle=LINE_STYLES[1],
-                label="reference, at its own level",
+                label=f"{reference_name}, carried to the hub",
             )  # fmt: skip
     if mean is not None:
         ax.axhline(mean, color=MUTED, linewidth=0.9, label=f"mean of months {mean:.3f} kg/m³")

@@ -177,7 +177,7 @@ def cross_check(
     """The reference's density in the same hours, by month, and the mast's over it.
 
     With both elevations the reference is carried to the hub and the ratio should be one. Without,
-    the ratio is divided by its own mean: it should not move from month to month.
+    the mean ratio brings the reference to the hub: what is left should not move over the months.
     """
     columns = ["month", "reference_air_density_kg_m3", "mast_over_reference"]
     if not {"air_temperature", "air_pressure"} <= set(known.columns):
@@ -214,12 +214,14 @@ def cross_check(
     assert isinstance(pairs.index, pd.DatetimeIndex)
     means = pairs.groupby(pairs.index.month).mean()
     ratio = means["ours"] / means["theirs"]
+    at_hub = means["theirs"]
     if place.elevation_m is None:
-        ratio = ratio / ratio.mean()
+        # Its level is unknown: the mean ratio brings it up, and months may still part.
+        at_hub, ratio = at_hub * ratio.mean(), ratio / ratio.mean()
     return pd.DataFrame(
         {
             "month": means.index,
-            "reference_air_density_kg_m3": means["theirs"].to_numpy(),
+            "reference_air_density_kg_m3": at_hub.to_numpy(),
             "mast_over_reference": ratio.to_numpy(),
         }
     )

@@ -279,10 +279,10 @@ def _said(
         said["extremes"] = (
             f"At the mast's place the ten-minute wind of 50 years is {extremes.v50:.1f} m/s with "
             f"a standard error of {extremes.v50_standard_error:.1f}; the fits lie between "
-            f"{fits.min():.1f} and {fits.max():.1f}, and the Weibull tail says {extremes.from_weibull:.1f}. The 3 s "
-            f"gust is {extremes.gust_50:.1f} m/s. At the windiest turbine, {windiest.name}, the "
-            f"wind of 50 years is {windiest.speed_factor * extremes.v50:.1f} m/s, and "
-            "the verdict uses that."
+            f"{fits.min():.1f} and {fits.max():.1f}, and the Weibull tail says "
+            f"{extremes.from_weibull:.1f}. The 3 s gust is {extremes.gust_50:.1f} m/s. At the "
+            f"windiest turbine, {windiest.name}, the wind of 50 years is "
+            f"{windiest.speed_factor * extremes.v50:.1f} m/s, and the verdict uses that."
         )
     said["verdict"] = f"{_counted(table)} {CAUTION}"
     return said
@@ -332,10 +332,10 @@ def _warnings(table: pd.DataFrame) -> list[str]:
     warnings = []
     for row in machine[machine["verdict"] == OUTSIDE].itertuples():
         site, limit = (_amount(value, row.unit, row.group) for value in (row.site, row.limit))
+        note = f" ({row.note!s})" if row.note else ""
         warnings.append(
-            f"Outside: {row.condition} is {site}, and the limit of {row.against} is {limit}"
-            + (f" ({row.note})" if row.note else "")
-            + "."
+            f"Outside: {row.condition!s} is {site}, and the limit of {row.against!s} is "
+            f"{limit}{note}."
         )
     unknown = machine.loc[machine["verdict"] == NOT_ASSESSED, "condition"].tolist()
     if unknown:

@@ -164,6 +164,7 @@ def carry_to_hub(
     )
     speed = series["wind_speed"].to_numpy(dtype=np.float64)
     has_profile = data.height.size > 1 and len(data.wind_speed) > 1
+    exponent = measured.number("measured.shear_exponent")
     if has_profile:
         found = factors(data, choice, method=choice.method, height=main_height, target_height=hub)
         method = METHOD_NAMES[choice.method]
@@ -171,13 +172,18 @@ def carry_to_hub(
         basis = f"{method}, from {len(data.wind_speed):,} intervals at {told} m"
         left_out = leave_top_height_out(data, choice, main_height=main_height, hub_height=hub)
     else:
-        exponent = measured.number("measured.shear_exponent")
         factor = float(power_law(1.0, main_height, hub, exponent))
         shape = (sectors + 1, 24, 12)
         found = Factors(np.full(shape, factor), np.full(shape, -1, dtype=np.intp))
         method = METHOD_NAMES["single"]
         basis = f"{method} of {exponent:.3f} from step 2"
         left_out = None
+    without_classes = []
+    if not has_profile and choice.method != "single":
+        without_classes.append(
+            f'profile.method asks for "{choice.method}", but no two heights have wind in the same '
+            f"intervals: one exponent of {exponent:.3f} is used at all hours instead."
+        )
     hub_speed = speed * found.of(kinds)
     uncertainty, uncertainty_basis = _uncertainty(
         measured, choice, left_out, main_height=main_height, hub=hub
@@ -191,7 +197,9 @@ def carry_to_hub(
         method=method,
         methods=_methods(data, choice, speed, kinds, main_height, hub)
         if has_profile
-        else pd.DataFrame(columns=_METHOD_COLUMNS),
+        else pd.DataFrame(
+            [(basis, True, float(np.nanmean(hub_speed)), np.nan, np.nan)], columns=_METHOD_COLUMNS
+        ),
         exponent_by_hour=_exponent_by_hour(found, kinds, speed, main_height, hub, choice),
         levels=_levels(found, kinds),
         left_out=left_out,
@@ -200,7 +208,7 @@ def carry_to_hub(
         basis=basis,
         longitude=longitude,
         notes=data.notes,
-        warnings=_warnings(data, main_height, hub),
+        warnings=[*without_classes, *_warnings(data, main_height, hub)],
     )
 
 
@@ -298,7 +306,13 @@ def _levels(found: Factors, kinds: Kinds) -> pd.DataFrame:
     level = found.level[kinds.sector, kinds.hour, kinds.month - 1]
     shares = [float(np.mean(level == number)) for number in range(len(level_names()))]
     table = pd.DataFrame({"told_apart_by": level_names(), "share_of_hours": shares})
-    return table[table["share_of_hours"] > 0].reset_index(drop=True)
+    table = table[table["share_of_hours"] > 0].reset_index(drop=True)
+    if table.empty:
+        # A law without classes of time treats all hours alike, and the table says so.
+        return pd.DataFrame(
+            {"told_apart_by": ["no classes of hour and month"], "share_of_hours": [1.0]}
+        )
+    return table
 
 
 def _refuse_low(data: ProfileData, choice: ProfileSettings, hub: float, main_height: float) -> None:

@@ -36,6 +36,9 @@ Array = NDArray[np.float64]
 #: How far the mast's density may lie from the reference's before it is told [1], our choice: two
 #: barometers of 1 hPa and thermometers of 1 K differ by half of it.
 _NOTABLE_DIFFERENCE = 0.01
+#: Share of its hours from which a calendar month speaks for itself [1], our choice.
+_HALF_A_MONTH = 0.5
+_DAYS = np.array([31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31])
 _MEASURED, _REFERENCE, _HABIT, _STANDARD, _ASSUMED = (
     "measured at the mast",
     "reference, brought to the mast's level",
@@ -69,6 +72,8 @@ class HubAir:
         level; empty where the reference has none.
     said : str
     warnings : list of str
+    reference : str
+        Name of the reference it is held against.
     """
 
     density: Array
@@ -80,6 +85,7 @@ class HubAir:
     temperature: pd.Series
     said: str
     warnings: list[str]
+    reference: str = ""
 
     def at(self, index: pd.DatetimeIndex) -> Array:
         """Density of each hour by its month and time of day [kg/m3]."""
@@ -138,6 +144,14 @@ def hub_air(
         levels[quantity] = borrowed
         filled[quantity], source = _fill(own, borrowed, index, quantity, last[quantity])
         sources.append(source)
+    known_steps = [
+        there
+        for there in (
+            _known(record, channels[quantity], levels[quantity])
+            for quantity in ("air_temperature", "air_pressure")
+        )
+        if there.any()
+    ]
     density, temperature, pressure = density_by_step(
         filled["air_temperature"],
         filled["air_pressure"],
@@ -152,23 +166,44 @@ def hub_air(
         density = np.full(len(index), float(standard_atmosphere(site.elevation_m + hub)[2]))
     ours = hourly(index, density)
     theirs = reference_density(levels, heights, hub)
-    climatology, filled_months = _climatology(index, density, ours, theirs)
+    thin = np.zeros(12, dtype=bool)
+    if known_steps:
+        month_of = index.month.to_numpy()[known_steps[0]] - 1
+        in_month = np.bincount(month_of, minlength=12) * mast.interval_min / 60.0
+        thin = in_month < _HALF_A_MONTH * 24.0 * _DAYS
+    climatology, filled_months = _climatology(
+        index, density, ours, theirs, thin, float(standard_atmosphere(site.elevation_m + hub)[2])
+    )
     monthly = _monthly(index, density, temperature, pressure, filled["relative_humidity"])
     monthly = monthly.merge(cross_check(settings, ours, known, place), how="left", on="month")
     table = pd.concat(sources, ignore_index=True)
     mean = float(climatology.to_numpy().mean(axis=1).mean())
     warm = levels["air_temperature"] - STANDARD_LAPSE_RATE * (hub - heights["air_temperature"])
     warnings = _warnings(monthly, place.name)
+    standard_months = int(thin.sum()) - filled_months
+    if thin.any():
+        others = [
+            f"{count} from {source}"
+            for count, source in (
+                (filled_months, place.name), (standard_months, "the standard atmosphere")
+            )
+            if count
+        ]  # fmt: skip
+        warnings.append(
+            f"Air is known for {12 - int(thin.sum())} of 12 calendar months by half of their hours "
+            f"or more; density of the other months: {', '.join(others)}."
+        )
     return HubAir(
         density=density,
         climatology=climatology,
         mean=mean,
-        basis=_basis(channels, table, hub, len(monthly), filled_months),
+        basis=_basis(channels, table, hub, int((~thin).sum()), filled_months, standard_months),
         monthly=monthly,
         sources=table,
         temperature=warm.rename("temperature"),
-        said=_said(mean, monthly, table),
+        said=_said(mean, climatology, monthly, table, place),
         warnings=warnings,
+        reference=place.name,
     )
 
 
@@ -212,16 +247,36 @@ def _fill(
     return values, table[table["share"] > 0]
 
 
+def _known(
+    record: pd.DataFrame, channel: ChannelSettings | None, borrowed: pd.Series
+) -> NDArray[np.bool_]:
+    """Steps whose value the mast or the reference has, no habit and no standard."""
+    there = np.zeros(len(record), dtype=bool)
+    if channel is not None:
+        there |= record[channel.name].notna().to_numpy()
+    if len(borrowed):
+        index = record.index
+        assert isinstance(index, pd.DatetimeIndex)
+        there |= borrowed.reindex(index.floor("h")).notna().to_numpy()
+    return there
+
+
 def _climatology(
-    index: pd.DatetimeIndex, density: Array, ours: pd.Series, theirs: pd.Series
+    index: pd.DatetimeIndex,
+    density: Array,
+    ours: pd.Series,
+    theirs: pd.Series,
+    thin: NDArray[np.bool_],
+    standard: float,
 ) -> tuple[pd.DataFrame, int]:
-    """Mean density by month and hour; months that were not measured from the reference."""
+    """Mean density by month and hour; thin months from the reference, else the standard's."""
     month, hour = index.month.to_numpy(), index.hour.to_numpy()
     cell = (month - 1) * 24 + hour
     count = np.bincount(cell, minlength=288).reshape(12, 24)
     total = np.bincount(cell, density, minlength=288).reshape(12, 24)
     with np.errstate(invalid="ignore", divide="ignore"):
         table = total / count
+    table[thin] = np.nan
     filled = 0
     whole = np.isfinite(table).all(axis=1)
     if not whole.all() and len(theirs):
@@ -233,6 +288,7 @@ def _climatology(
         gaps = ~np.isfinite(table)
         filled = int((gaps.all(axis=1) & np.isfinite(other).any(axis=1)).sum())
         table = np.where(gaps, other, table)
+    table[thin & ~np.isfinite(table).any(axis=1)] = standard
     # What is left takes the mean of its month, then that of the months that are known.
     with np.errstate(invalid="ignore"):
         known = np.isfinite(table)
@@ -288,6 +344,7 @@ def _basis(
     hub: float,
     months: int,
     filled_months: int,
+    standard_months: int,
 ) -> str:
     names = {
         "air_temperature": "temperature",
@@ -303,21 +360,35 @@ def _basis(
     if other:
         text += f"; the rest from: {', '.join(other)}"
     text += f"; mean of {months} calendar months"
-    return text + (f" and {filled_months} from the reference" if filled_months else "")
+    text += f" and {filled_months} from the reference" if filled_months else ""
+    return text + (f" and {standard_months} of the standard atmosphere" if standard_months else "")
 
 
-def _said(mean: float, monthly: pd.DataFrame, sources: pd.DataFrame) -> str:
-    low = monthly.iloc[int(monthly["air_density_kg_m3"].to_numpy().argmin())]
-    high = monthly.iloc[int(monthly["air_density_kg_m3"].to_numpy().argmax())]
-    text = (
-        f"The air at the hub weighs {mean:.3f} kg/m³ in the mean of the months, between "
-        f"{low['air_density_kg_m3']:.3f} in month {low['month']:.0f} and "
-        f"{high['air_density_kg_m3']:.3f} in month {high['month']:.0f}."
-    )
+def _said(
+    mean: float,
+    climatology: pd.DataFrame,
+    monthly: pd.DataFrame,
+    sources: pd.DataFrame,
+    place: ReferenceSettings,
+) -> str:
+    of_month = climatology.mean(axis=1).to_numpy()
+    low, high = int(of_month.argmin()), int(of_month.argmax())
+    text = f"The air at the hub weighs {mean:.3f} kg/m³ in the mean of the months"
+    if f"{of_month[low]:.3f}" != f"{of_month[high]:.3f}":
+        text += (
+            f", between {of_month[low]:.3f} in month {low + 1} and {of_month[high]:.3f} in month "
+            f"{high + 1}"
+        )
+    text += "."
     ratio = monthly["mast_over_reference"].dropna()
     if len(ratio):
+        how = (
+            "carried to the hub"
+            if place.elevation_m is not None
+            else "brought to the hub by the mean ratio of both, its elevation not being declared"
+        )
         text += (
-            f" Against the reference, months lie between {ratio.min() - 1:+.2%} and "
+            f" Against {place.name}, {how}, months lie between {ratio.min() - 1:+.2%} and "
             f"{ratio.max() - 1:+.2%}."
         )
     borrowed = sources[sources["source"] != _MEASURED]

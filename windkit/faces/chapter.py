@@ -190,9 +190,7 @@ class _Chapter:
         outputs = "\n".join(html for html in shown if html)
         return code + (f'\n<div class="output">\n{outputs}\n</div>' if outputs else "")
 
-    def _output(
-        self, output: Mapping[str, Any], cell: Any, *, caption: str = ""
-    ) -> Iterator[str]:
+    def _output(self, output: Mapping[str, Any], cell: Any, *, caption: str = "") -> Iterator[str]:
         kind = output["output_type"]
         if kind == "error":
             raise ValueError(

@@ -42,6 +42,7 @@ _SUMMARY_KEYS = {
     "uncertainty.static",
     "uncertainty.yearly",
     "conditions.v50_m_s",
+    "conditions.v50_windiest_m_s",
     "conditions.turbulence_class",
     "conditions.verdict.outside",
     "conditions.verdict.not_assessed",

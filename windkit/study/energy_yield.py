@@ -345,6 +345,11 @@ def _warnings(settings: Settings) -> list[str]:
             f"{len(assumed)} of {len(settings.losses)} losses are assumed, not computed or agreed; "
             "their basis stands in the table of losses."
         )
+    if any(loss.group == "turbine_interaction" for loss in settings.losses):
+        warnings.append(
+            "The wake loss is one figure, spread evenly over the turbines: the energy of a single "
+            "turbine behind another is less than its row says."
+        )
     for place in settings.layout:
         above = place.elevation_m - settings.site.elevation_m
         if abs(above) > _ELEVATION_WORTH_A_WORD:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import gzip
 import json
 import shutil
 from pathlib import Path
@@ -132,10 +133,17 @@ def test_the_top_sensor_left_out_is_in_the_report(study: Path, results: dict) ->
 
 
 def test_every_row_is_kept_or_listed(study: Path) -> None:
-    book = openpyxl.load_workbook(study / "handover" / "tables.xlsx")
+    table = pd.read_parquet(study / "results" / "measure" / "rows.parquet")
+    rows = table.set_index("rows")["count"]
+    with gzip.open(study / "data" / "mast.csv.gz", "rt") as stream:
+        lines = sum(1 for _ in stream) - 1  # less the header
+    aside = rows[rows.index.str.startswith("set aside")].sum()
+    assert rows["read from the files"] == lines == rows["kept"] + aside
+    counts = pd.read_parquet(study / "results" / "measure" / "counts.parquet")
+    parts = counts[["absent", "no_value", "masked", "kept"]].sum(axis=1)
+    assert (parts == counts["expected"]).all()
     page = (study / "handover" / "report.html").read_text()
     assert "Rows of the files, reconciled" in page
-    assert book is not None
 
 
 def test_second_run_gives_the_same_bytes(study: Path, tmp_path: Path) -> None:

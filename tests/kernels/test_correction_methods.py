@@ -14,7 +14,7 @@ from windkit.kernels.correction_methods import (
     QuantileMapping,
     SectorVeer,
     TotalLeastSquares,
-    WeibullScaling,
+    WeibullParameterScaling,
 )
 
 
@@ -68,7 +68,7 @@ def test_weibull_scaling_is_exact_for_weibull_records():
     share = (np.arange(20_000) + 0.5) / 20_000
     reference = stats.weibull_min(2.2, scale=8.0).ppf(share)
     site = stats.weibull_min(1.8, scale=6.5).ppf(share)
-    fitted = WeibullScaling().fit(reference, site)
+    fitted = WeibullParameterScaling().fit(reference, site)
     assert fitted.site_shape_ == pytest.approx(1.8, rel=2e-3)
     assert fitted.reference_scale_ == pytest.approx(8.0, rel=2e-3)
     np.testing.assert_allclose(fitted.predict(reference[50:-50]), site[50:-50], rtol=5e-3)
@@ -101,7 +101,7 @@ def test_veer_of_each_sector_is_found_and_turned_back():
         TotalLeastSquares(),
         QuantileMapping(quantile_count=50),
         ConditionalDistributions(seed=3),
-        WeibullScaling(),
+        WeibullParameterScaling(),
         BySector(QuantileMapping(), sector_count=4, min_count=50),
     ],
 )

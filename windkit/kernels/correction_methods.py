@@ -29,7 +29,7 @@ __all__ = [
     "QuantileMapping",
     "SectorVeer",
     "TotalLeastSquares",
-    "WeibullScaling",
+    "WeibullParameterScaling",
 ]
 
 #: Fewest pairs a bin of the matrix is drawn from [1], our choice.
@@ -173,7 +173,7 @@ class ConditionalDistributions(SiteEstimator):
         return np.where(known, np.where(outside, scaled, drawn), np.nan)
 
 
-class WeibullScaling(SiteEstimator):
+class WeibullParameterScaling(SiteEstimator):
     """Map that carries the reference's Weibull distribution into the site's.
 
     Attributes

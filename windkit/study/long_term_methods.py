@@ -21,7 +21,7 @@ from windkit.kernels.correction_methods import (
     QuantileMapping,
     SectorVeer,
     TotalLeastSquares,
-    WeibullScaling,
+    WeibullParameterScaling,
 )
 from windkit.kernels.correction_seasons import BySeason
 from windkit.kernels.estimator import SiteEstimator, copy_of
@@ -60,7 +60,7 @@ def method_estimators(
         "total least squares": TotalLeastSquares(),
         "quantile mapping": QuantileMapping(),
         "conditional distributions": ConditionalDistributions(seed=seed),
-        "Weibull scaling": WeibullScaling(),
+        "Weibull-parameter scaling": WeibullParameterScaling(),
     }
     found = dict(plain)
     if with_direction:

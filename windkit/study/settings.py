@@ -31,7 +31,6 @@ from windkit.study.station_draft import OPEN
 from windkit.study.stations import StationSettings
 
 __all__ = [
-    "SCHEMA_VERSION",
     "SETTINGS_FILE",
     "UNCERTAINTY_GROUPS",
     "Deviation",
@@ -52,7 +51,6 @@ __all__ = [
 ]
 
 SETTINGS_FILE = "study.toml"
-SCHEMA_VERSION = 1
 #: How the template marks a text that a person must write.
 FILL_IN = "FILL IN"
 
